@@ -1,0 +1,1 @@
+"""Every place where an axon comes close to another cell."""

@@ -1,0 +1,1 @@
+"""The volume of cortex, its layers, and cells in place."""

@@ -1,0 +1,1 @@
+"""Errors, keyed draws, table declarations, whole files, progress."""

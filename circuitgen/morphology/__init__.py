@@ -1,0 +1,1 @@
+"""Reconstructions: SWC intake, repair, arbors as arrays, stand-in growth."""

@@ -1,0 +1,1 @@
+"""Run folders, the order of stages, resume."""

@@ -1,0 +1,1 @@
+"""The spec file: models, loading with line numbers, starter spec."""

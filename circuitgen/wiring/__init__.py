@@ -1,0 +1,1 @@
+"""The maximum-entropy law of wiring: fit, match, draw."""
