@@ -1,0 +1,191 @@
+"""All that the search reads: arbors packed one after another, and cells in place."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from circuitgen.appositions.kernels import RUN_LENGTH, Axons, Placed, Targets
+from circuitgen.morphology.arbor import Arbor, Kind
+
+# Bits of the kinds of target; a presynaptic type's mask is a sum of them.
+TARGET_BITS = {"soma": 1, "axon_initial_segment": 2, "basal": 4, "apical": 8}
+TARGET_NAMES = {bit: name for name, bit in TARGET_BITS.items()}
+_KIND_BITS = np.zeros(8, np.uint8)
+_KIND_BITS[[Kind.SOMA, Kind.BASAL, Kind.APICAL]] = 1, 4, 8
+
+
+@dataclass(frozen=True)
+class Reach:
+    """How far each arbor's targets go: sideways, below and above the soma (um)."""
+
+    side_um: np.ndarray
+    below_um: np.ndarray
+    above_um: np.ndarray
+
+
+@dataclass(frozen=True)
+class Scene:
+    """Cells and their arbors, ready to be searched; positions in micrometres."""
+
+    axons: Axons
+    targets: Targets
+    placed: Placed
+    target_reach: Reach
+    max_gap_um: float
+    min_spacing_um: float
+    autapses: bool
+    wrap_um: tuple[float, float]
+
+
+def target_bits(arbor: Arbor) -> np.ndarray:
+    """Return the target bit of every segment, 0 for axon beyond the initial segment."""
+    bits = _KIND_BITS[arbor.kind]
+    return np.where(arbor.initial, np.uint8(2), bits).astype(np.uint8)
+
+
+def _packed(arbors: Sequence[Arbor], chosen: Sequence[np.ndarray], field: str):
+    parts = [
+        getattr(arbor, field)[index] for arbor, index in zip(arbors, chosen, strict=True)
+    ]
+    return np.ascontiguousarray(np.concatenate(parts), dtype=np.float64)
+
+
+def _first(chosen: Sequence[np.ndarray]) -> np.ndarray:
+    return np.concatenate([[0], np.cumsum([index.size for index in chosen])])
+
+
+def _segments(chosen: Sequence[np.ndarray]) -> np.ndarray:
+    return np.concatenate(chosen).astype(np.int32)
+
+
+def pack_targets(arbors: Sequence[Arbor]) -> Targets:
+    """Pack the target capsules of all arbors."""
+    bits = [target_bits(arbor) for arbor in arbors]
+    chosen = [np.flatnonzero(bit) for bit in bits]
+    return Targets(
+        first=_first(chosen),
+        start=_packed(arbors, chosen, "start_um"),
+        end=_packed(arbors, chosen, "end_um"),
+        start_radius=_packed(arbors, chosen, "start_radius_um"),
+        end_radius=_packed(arbors, chosen, "end_radius_um"),
+        segment=_segments(chosen),
+        kind=np.concatenate([b[i] for b, i in zip(bits, chosen, strict=True)]),
+    )
+
+
+def _run_spheres(start, end, radius, bounds) -> tuple[np.ndarray, np.ndarray]:
+    """Centre (runs, 3) and radius (runs,) of a sphere around every run of capsules."""
+    if bounds.size < 2:
+        return np.zeros((0, 3)), np.zeros(0)
+    low = np.minimum.reduceat(np.minimum(start, end), bounds[:-1])
+    high = np.maximum.reduceat(np.maximum(start, end), bounds[:-1])
+    center = (low + high) / 2
+    each = np.repeat(center, np.diff(bounds), axis=0)
+    far = np.maximum(
+        np.linalg.norm(start - each, axis=1), np.linalg.norm(end - each, axis=1)
+    )
+    return center, np.maximum.reduceat(far + radius, bounds[:-1])
+
+
+def pack_axons(arbors: Sequence[Arbor]) -> Axons:
+    """Pack the axon capsules of all arbors, in runs of neighbours."""
+    chosen = [np.flatnonzero(arbor.kind == Kind.AXON) for arbor in arbors]
+    first = _first(chosen)
+    start, end = _packed(arbors, chosen, "start_um"), _packed(arbors, chosen, "end_um")
+    start_radius = _packed(arbors, chosen, "start_radius_um")
+    end_radius = _packed(arbors, chosen, "end_radius_um")
+    radius = np.maximum(start_radius, end_radius)
+    begins = [
+        np.arange(low, high, RUN_LENGTH)
+        for low, high in zip(first[:-1], first[1:], strict=True)
+    ]
+    bounds = np.concatenate([*begins, first[-1:]])
+    center, run_radius = _run_spheres(start, end, radius, bounds)
+    far = np.maximum(np.linalg.norm(start, axis=1), np.linalg.norm(end, axis=1)) + radius
+    return Axons(
+        first=first,
+        start=start,
+        end=end,
+        start_radius=start_radius,
+        end_radius=end_radius,
+        segment=_segments(chosen),
+        reach=np.array(
+            [
+                far[low:high].max(initial=0.0)
+                for low, high in zip(first[:-1], first[1:], strict=True)
+            ]
+        ),
+        run_first=_first(begins),
+        run_bounds=bounds,
+        run_center=center,
+        run_radius=run_radius,
+    )
+
+
+def _reach_of(targets: Targets) -> Reach:
+    """Measure how far the targets of each arbor go from its soma."""
+    begins = targets.first[:-1]
+    radius = np.maximum(targets.start_radius, targets.end_radius)
+    side = np.maximum(
+        np.hypot(targets.start[:, 0], targets.start[:, 1]),
+        np.hypot(targets.end[:, 0], targets.end[:, 1]),
+    )
+    low = np.minimum(targets.start[:, 2], targets.end[:, 2])
+    high = np.maximum(targets.start[:, 2], targets.end[:, 2])
+    return Reach(
+        np.maximum.reduceat(side + radius, begins),
+        np.minimum.reduceat(low - radius, begins),
+        np.maximum.reduceat(high + radius, begins),
+    )
+
+
+def make_scene(
+    arbors: Sequence[Arbor],
+    *,
+    arbor_index: np.ndarray,
+    position_um: np.ndarray,
+    azimuth_deg: np.ndarray,
+    target_mask: np.ndarray,
+    max_gap_um: float,
+    min_spacing_um: float,
+    autapses: bool = False,
+    wrap_um: tuple[float, float] = (0.0, 0.0),
+) -> Scene:
+    """Put arbors in place for the search.
+
+    Parameters
+    ----------
+    arbors : sequence of Arbor
+        Every one has a soma, so that no arbor is without target.
+    arbor_index, azimuth_deg : (n,)
+        Reconstruction and turn about z of every cell.
+    position_um : (n, 3)
+        Soma centres.
+    target_mask : (n,)
+        Sum of the `TARGET_BITS` that the cell's axon may contact.
+    max_gap_um, min_spacing_um, autapses
+        The spec's rules of what an apposition is.
+    wrap_um : tuple of float
+        Periods of the box in x and y; 0 where the edge is open.
+    """
+    angle = np.deg2rad(np.asarray(azimuth_deg, dtype=np.float64))
+    targets = pack_targets(arbors)
+    placed = Placed(
+        arbor=np.asarray(arbor_index, dtype=np.int64),
+        position=np.ascontiguousarray(position_um, dtype=np.float64),
+        turn=np.column_stack([np.cos(angle), np.sin(angle)]),
+        mask=np.asarray(target_mask, dtype=np.uint8),
+    )
+    return Scene(
+        axons=pack_axons(arbors),
+        targets=targets,
+        placed=placed,
+        target_reach=_reach_of(targets),
+        max_gap_um=float(max_gap_um),
+        min_spacing_um=float(min_spacing_um),
+        autapses=autapses,
+        wrap_um=wrap_um,
+    )
