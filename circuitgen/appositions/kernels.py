@@ -1,11 +1,10 @@
 """Compiled loops of the apposition search: arrays in, arrays out.
 
-Two rasterisations meet in voxels. Target capsules, widened by the largest gap and by
-an allowance for the axon's radius, are listed in every voxel that they cross; an axon
-capsule then looks into the voxels that its own line crosses. A candidate is rejected
-by a bound in single precision that can only err on the side of keeping it; what is
-left is decided in double precision from the cells' own frames, so that an answer
-never depends on how the work was cut into blocks.
+Targets of a block are sorted by voxel, the z axis fastest, so that all that lie near
+an axon segment are a few contiguous runs of rows. A whole run is tested at once in
+single precision by bounds that can only err on the side of keeping a row; what is left
+is decided in double precision from the cells' own frames, so that an answer never
+depends on how the work was cut into blocks.
 """
 
 from __future__ import annotations
@@ -21,32 +20,34 @@ from circuitgen.core.compilation import kernel
 # arbor begins. Axons also come in runs of neighbours with a bounding sphere each.
 Axons = namedtuple(
     "Axons",
-    "first start end start_radius end_radius segment reach run_first run_bounds"
-    " run_center run_radius",
+    "first start end start_radius end_radius segment run_first run_bounds run_center"
+    " run_radius",
 )
 Targets = namedtuple("Targets", "first start end start_radius end_radius segment kind")
 # Cells: arbor (n,), position (n, 3), turn (n, 2) = cosine and sine of the azimuth,
 # mask (n,) = bits of the target kinds that the cell's axon may contact.
 Placed = namedtuple("Placed", "arbor position turn mask")
-# Targets of one block in voxels. Single-precision copies are relative to `origin`:
-# middle (n, 3), half (n, 3), half_length (n,), radius (n,); `cell` and `row` lead back
-# to the cell and to the row in Targets. Voxel v lists entries[first[v]:first[v + 1]].
-Voxels = namedtuple(
-    "Voxels",
-    "origin size shape first entries middle half half_length radius cell row kind",
-)
-# max_gap, min_spacing, allowance for the axon's radius, slack of single precision,
-# wrap lengths in x and y (0: open), autapses allowed.
-Rules = namedtuple(
-    "Rules", "max_gap min_spacing allowance slack slack32 wrap_x wrap_y autapses"
-)
-
-# What one axon came close to: cell in the block, rows of axon and target, gap, and the
-# fractions along both segments.
+# A box of voxels: corner `origin`, voxel sizes and counts along x, y, z, periods in x
+# and y (0: open).
+Grid = namedtuple("Grid", "origin size shape period")
+# Targets of one block, sorted by voxel; voxel v holds rows first[v] to first[v + 1].
+# `shapes` (8, n) holds single-precision copies relative to the grid's origin: middle,
+# half, half length, radius; `owner` and `row` lead to the cell of the block and to the
+# row in Targets. `reach`: the largest half length plus radius; `longest`: the largest
+# number of rows in a column of voxels along z.
+Layer = namedtuple("Layer", "grid first shapes owner row kind reach longest")
+# Largest gap, least spacing, room for the errors of single precision, autapses allowed.
+Rules = namedtuple("Rules", "max_gap min_spacing slack autapses")
+# What one axon came close to: cell in the block, row of the axon, segment of the target
+# in its arbor, gap, and the fractions along both segments.
 Hits = namedtuple("Hits", "owner axon target gap axon_fraction target_fraction")
 # Pairs with at least one site, and their sites one pair after another, closest first.
 Sites = namedtuple("Sites", "axon target axon_fraction target_fraction gap")
 Pairs = namedtuple("Pairs", "post pre count")
+
+# Memory that one task uses again and again: scratch (4, 3) for two segments, middle and
+# half (3,) of the axon segment, marks of one run of rows, list of the rows found.
+Work = namedtuple("Work", "scratch middle half near found")
 
 RUN_LENGTH = 16
 _OWN_KINDS = np.uint8(12)  # an autapse may sit on basal and apical dendrite only
@@ -130,135 +131,112 @@ def segment_distances(a, b, c, d):
 
 
 @kernel
-def _crosses(offset, half, square, size, reach):
-    """Tell whether a capsule may cross a voxel, never wrongly 'no'.
-
-    `offset` leads from the capsule's middle to the voxel's centre. The support of the
-    cube along the perpendicular from the line bounds the distance from below.
-    """
-    along = offset[0] * half[0] + offset[1] * half[1] + offset[2] * half[2]
-    fraction = min(max(along / square, -1.0), 1.0) if square > 0.0 else 0.0
-    x = offset[0] - fraction * half[0]
-    y = offset[1] - fraction * half[1]
-    z = offset[2] - fraction * half[2]
-    distance = np.sqrt(x * x + y * y + z * z)
-    return distance * (distance - reach) <= 0.5 * size * (abs(x) + abs(y) + abs(z))
+def _wrapped(value, period):
+    """Bring a coordinate into [0, period); leave it where the period is 0."""
+    return value - period * np.floor(value / period) if period > 0.0 else value
 
 
 @kernel
-def _voxel_range(middle, half, reach, size, shape, axis):
-    """First and last voxel along an axis that the capsule's box touches."""
-    extent = abs(half[axis]) + reach
-    low = int(np.floor((middle[axis] - extent) / size))
-    high = int(np.floor((middle[axis] + extent) / size))
-    return max(low, 0), min(high, shape[axis] - 1)
+def _voxel_of(middle, grid):
+    """Index of the voxel that holds a point given relative to the grid's origin."""
+    index = 0
+    for axis in range(3):
+        step = int(np.floor(middle[axis] / grid.size[axis]))
+        index = index * grid.shape[axis] + min(max(step, 0), grid.shape[axis] - 1)
+    return index
 
 
 @kernel
-def place_targets(targets, placed, cells, origin):
-    """Place the targets of `cells` and keep single-precision copies from `origin`."""
-    total = 0
+def _middle_of(start, end, grid, middle):
+    """Middle of a segment relative to the grid's origin, periods taken out."""
+    for axis in range(3):
+        value = 0.5 * (start[axis] + end[axis]) - grid.origin[axis]
+        middle[axis] = _wrapped(value, grid.period[axis])
+
+
+@kernel
+def count_targets(targets, placed, cells, grid, first):
+    """Set `first` (voxels + 1) to the running number of targets up to each voxel."""
+    start, end, middle = np.zeros(3), np.zeros(3), np.zeros(3)
     for cell in cells:
-        arbor = placed.arbor[cell]
-        total += targets.first[arbor + 1] - targets.first[arbor]
-    middle = np.zeros((total, 3), np.float32)
-    half = np.zeros((total, 3), np.float32)
-    half_length = np.zeros(total, np.float32)
-    radius = np.zeros(total, np.float32)
-    owner = np.zeros(total, np.int32)
-    row = np.zeros(total, np.int32)
-    kind = np.zeros(total, np.uint8)
-    start, end = np.zeros(3), np.zeros(3)
-    out = 0
-    for index in range(cells.size):
+        arbor, turn, position = (
+            placed.arbor[cell],
+            placed.turn[cell],
+            placed.position[cell],
+        )
+        for row in range(targets.first[arbor], targets.first[arbor + 1]):
+            _place(targets.start[row], turn, position, start)
+            _place(targets.end[row], turn, position, end)
+            _middle_of(start, end, grid, middle)
+            first[_voxel_of(middle, grid)] += 1
+    total = 0
+    for voxel in range(first.size):
+        total += first[voxel]
+        first[voxel] = total
+
+
+@kernel
+def fill_layer(targets, placed, cells, layer):
+    """Write every target into its voxel's rows; `first` ends as where voxels begin."""
+    start, end, middle, grid = np.zeros(3), np.zeros(3), np.zeros(3), layer.grid
+    for index in range(cells.size - 1, -1, -1):
         cell = cells[index]
-        arbor = placed.arbor[cell]
-        for source in range(targets.first[arbor], targets.first[arbor + 1]):
-            _place(
-                targets.start[source], placed.turn[cell], placed.position[cell], start
-            )
-            _place(targets.end[source], placed.turn[cell], placed.position[cell], end)
+        arbor, turn, position = (
+            placed.arbor[cell],
+            placed.turn[cell],
+            placed.position[cell],
+        )
+        for row in range(targets.first[arbor + 1] - 1, targets.first[arbor] - 1, -1):
+            _place(targets.start[row], turn, position, start)
+            _place(targets.end[row], turn, position, end)
+            _middle_of(start, end, grid, middle)
+            voxel = _voxel_of(middle, grid)
+            layer.first[voxel] -= 1
+            place = layer.first[voxel]
             square = 0.0
             for axis in range(3):
-                middle[out, axis] = 0.5 * (start[axis] + end[axis]) - origin[axis]
-                half[out, axis] = 0.5 * (end[axis] - start[axis])
-                square += (0.5 * (end[axis] - start[axis])) ** 2
-            half_length[out] = np.sqrt(square)
-            radius[out] = max(targets.start_radius[source], targets.end_radius[source])
-            owner[out], row[out], kind[out] = index, source, targets.kind[source]
-            out += 1
-    return middle, half, half_length, radius, owner, row, kind
+                half = 0.5 * (end[axis] - start[axis])
+                layer.shapes[axis, place] = middle[axis]
+                layer.shapes[3 + axis, place] = half
+                square += half * half
+            layer.shapes[6, place] = np.sqrt(square)
+            layer.shapes[7, place] = max(
+                targets.start_radius[row], targets.end_radius[row]
+            )
+            layer.owner[place], layer.row[place] = index, row
+            layer.kind[place] = targets.kind[row]
 
 
 @kernel
-def count_entries(middle, half, half_length, radius, reach, size, shape, counts):
-    """Add to `counts` (voxels,) how many capsules cross each voxel."""
-    offset = np.zeros(3)
-    for item in range(radius.size):
-        wide = radius[item] + reach
-        square = float(half_length[item]) ** 2
-        x_low, x_high = _voxel_range(middle[item], half[item], wide, size, shape, 0)
-        y_low, y_high = _voxel_range(middle[item], half[item], wide, size, shape, 1)
-        z_low, z_high = _voxel_range(middle[item], half[item], wide, size, shape, 2)
-        for x in range(x_low, x_high + 1):
-            offset[0] = (x + 0.5) * size - middle[item, 0]
-            for y in range(y_low, y_high + 1):
-                offset[1] = (y + 0.5) * size - middle[item, 1]
-                for z in range(z_low, z_high + 1):
-                    offset[2] = (z + 0.5) * size - middle[item, 2]
-                    if _crosses(offset, half[item], square, size, wide):
-                        counts[(x * shape[1] + y) * shape[2] + z] += 1
-
-
-@kernel
-def fill_entries(middle, half, half_length, radius, reach, size, shape, first, entries):
-    """Write the list of every voxel; `first` (voxels + 1) ends as it began."""
-    offset = np.zeros(3)
-    for item in range(radius.size - 1, -1, -1):
-        wide = radius[item] + reach
-        square = float(half_length[item]) ** 2
-        x_low, x_high = _voxel_range(middle[item], half[item], wide, size, shape, 0)
-        y_low, y_high = _voxel_range(middle[item], half[item], wide, size, shape, 1)
-        z_low, z_high = _voxel_range(middle[item], half[item], wide, size, shape, 2)
-        for x in range(x_low, x_high + 1):
-            offset[0] = (x + 0.5) * size - middle[item, 0]
-            for y in range(y_low, y_high + 1):
-                offset[1] = (y + 0.5) * size - middle[item, 1]
-                for z in range(z_low, z_high + 1):
-                    offset[2] = (z + 0.5) * size - middle[item, 2]
-                    if _crosses(offset, half[item], square, size, wide):
-                        voxel = (x * shape[1] + y) * shape[2] + z
-                        first[voxel] -= 1
-                        entries[first[voxel]] = item
-
-
-@kernel
-def _far_apart(middle, half, half_length, radius, item, voxels, slack):
-    """Tell whether an axon capsule surely stays clear of a target capsule.
+def _mark_near(middle, half, half_length, reach, rows, near):
+    """Mark the rows (8, n) that may lie within reach of an axon segment.
 
     Along any unit direction w, |m.w| - |u.w| - |v.w| bounds the distance of two
     segments from below (m between the middles, u and v the halves). Two directions
-    are tried: between the middles, and perpendicular to both segments.
+    are tried, between the middles and perpendicular to both segments, after the
+    test of the bounding spheres. No branch, so that the compiler can test many rows
+    at once.
     """
-    mx = voxels.middle[item, 0] - middle[0]
-    my = voxels.middle[item, 1] - middle[1]
-    mz = voxels.middle[item, 2] - middle[2]
-    reach = radius + voxels.radius[item] + slack
-    square = mx * mx + my * my + mz * mz
-    sphere = half_length + voxels.half_length[item] + reach
-    if square > sphere * sphere:
-        return True
+    x, y, z, radius = rows[0], rows[1], rows[2], rows[7]
+    half_x, half_y, half_z, half_lengths = rows[3], rows[4], rows[5], rows[6]
+    ax, ay, az = middle[0], middle[1], middle[2]
     ux, uy, uz = half[0], half[1], half[2]
-    vx, vy, vz = voxels.half[item, 0], voxels.half[item, 1], voxels.half[item, 2]
-    along = abs(ux * mx + uy * my + uz * mz) + abs(vx * mx + vy * my + vz * mz)
-    length = np.sqrt(square)
-    if square - along > reach * length:
-        return True
-    nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
-    # u and v are perpendicular to n but for rounding, which counts when n is short.
-    along = abs(ux * nx + uy * ny + uz * nz) + abs(vx * nx + vy * ny + vz * nz)
-    across = abs(mx * nx + my * ny + mz * nz) - along
-    return across > 0 and across * across > reach * reach * (nx * nx + ny * ny + nz * nz)
+    for i in range(rows.shape[1]):
+        mx, my, mz = x[i] - ax, y[i] - ay, z[i] - az
+        vx, vy, vz = half_x[i], half_y[i], half_z[i]
+        far = reach + radius[i]
+        square = mx * mx + my * my + mz * mz
+        sphere = half_length + half_lengths[i] + far
+        along = abs(ux * mx + uy * my + uz * mz) + abs(vx * mx + vy * my + vz * mz)
+        nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
+        # u and v are perpendicular to n but for rounding, which counts when n is short.
+        rounding = abs(ux * nx + uy * ny + uz * nz) + abs(vx * nx + vy * ny + vz * nz)
+        across = abs(mx * nx + my * ny + mz * nz) - rounding
+        near[i] = (
+            (square <= sphere * sphere)
+            & (square - along <= far * np.sqrt(square))
+            & (across <= far * np.sqrt(nx * nx + ny * ny + nz * nz))
+        )
 
 
 @kernel
@@ -361,122 +339,159 @@ def _grow_hits(hits):
 
 
 @kernel
-def _test(axons, targets, placed, voxels, rules, cells, item, axon, scratch, hits, n):
-    """Decide one candidate in double precision; append it when it is close enough.
+def _list_marked(near, count, low, found, n):
+    """Append low + i to `found` for each marked i < count; returns the new length.
 
-    `scratch` rows 0 and 1 hold the placed axon segment, 2 and 3 receive the target.
+    Marks are read eight at a time, for few are set.
     """
-    owner, row = voxels.cell[item], voxels.row[item]
-    post = cells[owner]
-    _place(targets.start[row], placed.turn[post], placed.position[post], scratch[2])
-    _place(targets.end[row], placed.turn[post], placed.position[post], scratch[3])
-    square, s, t = closest_points(scratch[0], scratch[1], scratch[2], scratch[3])
-    axon_radius = axons.start_radius[axon] + s * (
-        axons.end_radius[axon] - axons.start_radius[axon]
-    )
-    target_radius = targets.start_radius[row] + t * (
-        targets.end_radius[row] - targets.start_radius[row]
-    )
-    gap = max(np.sqrt(square) - axon_radius - target_radius, 0.0)
-    if gap > rules.max_gap:
-        return hits, n
-    if n == hits.owner.size:
-        hits = _grow_hits(hits)
-    hits.owner[n], hits.axon[n], hits.target[n] = owner, axon, row
-    hits.gap[n], hits.axon_fraction[n], hits.target_fraction[n] = gap, s, t
-    return hits, n + 1
+    near[count : count + 8] = 0
+    words = near.view(np.uint64)
+    for word in range((count + 7) // 8):
+        if words[word]:
+            for i in range(8 * word, 8 * word + 8):
+                if near[i]:
+                    found[n] = low + i
+                    n += 1
+    return n
 
 
 @kernel
-def _look(axons, targets, placed, voxels, rules, cells, pre, axon, work, hits, n):
-    """Look for targets around one placed axon segment (scratch rows 0 and 1)."""
-    scratch, middle, half, offset, stamps, stamp = work
-    square = 0.0
-    for axis in range(3):
-        middle[axis] = 0.5 * (scratch[0, axis] + scratch[1, axis]) - voxels.origin[axis]
-        half[axis] = 0.5 * (scratch[1, axis] - scratch[0, axis])
-        square += float(half[axis]) ** 2
-    half_length = np.float32(np.sqrt(square))
-    thick = np.float32(max(axons.start_radius[axon], axons.end_radius[axon]))
-    reach = thick + np.float32(rules.max_gap)
-    wide = max(thick - rules.allowance, 0.0) + rules.slack
-    size, shape, mask = voxels.size, voxels.shape, placed.mask[pre]
-    x_low, x_high = _voxel_range(middle, half, wide, size, shape, 0)
-    y_low, y_high = _voxel_range(middle, half, wide, size, shape, 1)
-    z_low, z_high = _voxel_range(middle, half, wide, size, shape, 2)
-    for x in range(x_low, x_high + 1):
-        offset[0] = (x + 0.5) * size - middle[0]
-        for y in range(y_low, y_high + 1):
-            offset[1] = (y + 0.5) * size - middle[1]
-            for z in range(z_low, z_high + 1):
-                offset[2] = (z + 0.5) * size - middle[2]
-                if not _crosses(offset, half, square, size, wide):
-                    continue
-                voxel = (x * shape[1] + y) * shape[2] + z
-                for place in range(voxels.first[voxel], voxels.first[voxel + 1]):
-                    item = voxels.entries[place]
-                    if stamps[item] == stamp[0]:
-                        continue
-                    stamps[item] = stamp[0]
-                    if not voxels.kind[item] & mask or _far_apart(
-                        middle, half, half_length, reach, item, voxels, rules.slack32
-                    ):
-                        continue
-                    if cells[voxels.cell[item]] == pre and not (
-                        rules.autapses and voxels.kind[item] & _OWN_KINDS
-                    ):
-                        continue
-                    hits, n = _test(
-                        axons,
-                        targets,
-                        placed,
-                        voxels,
-                        rules,
-                        cells,
-                        item,
-                        axon,
-                        scratch,
-                        hits,
-                        n,
-                    )
+def _nearest_copy(period, scratch):
+    """Move the target (rows 2, 3) by whole periods to the copy nearest to the axon."""
+    for axis in range(2):
+        if period[axis] > 0.0:
+            apart = scratch[0, axis] + scratch[1, axis]
+            apart -= scratch[2, axis] + scratch[3, axis]
+            shift = period[axis] * np.round(0.5 * apart / period[axis])
+            scratch[2, axis] += shift
+            scratch[3, axis] += shift
+
+
+@kernel
+def _test(axons, targets, placed, layer, rules, cells, pre, axon, work, m, hits, n):
+    """Decide the m listed rows in double precision; append those close enough."""
+    scratch, found, mask = work.scratch, work.found, placed.mask[pre]
+    while hits.owner.size < n + m:
+        hits = _grow_hits(hits)
+    a_radius = axons.start_radius[axon]
+    a_taper = axons.end_radius[axon] - a_radius
+    for k in range(m):
+        item = found[k]
+        owner, row, kind = layer.owner[item], layer.row[item], layer.kind[item]
+        post = cells[owner]
+        own = post == pre and not (rules.autapses and kind & _OWN_KINDS)
+        if own or not kind & mask:
+            continue
+        turn, position = placed.turn[post], placed.position[post]
+        _place(targets.start[row], turn, position, scratch[2])
+        _place(targets.end[row], turn, position, scratch[3])
+        _nearest_copy(layer.grid.period, scratch)
+        square, s, t = closest_points(scratch[0], scratch[1], scratch[2], scratch[3])
+        b_radius = targets.start_radius[row]
+        b_radius += t * (targets.end_radius[row] - b_radius)
+        gap = max(np.sqrt(square) - a_radius - s * a_taper - b_radius, 0.0)
+        if gap <= rules.max_gap:
+            hits.owner[n], hits.axon[n], hits.target[n] = (
+                owner,
+                axon,
+                targets.segment[row],
+            )
+            hits.gap[n], hits.axon_fraction[n], hits.target_fraction[n] = gap, s, t
+            n += 1
     return hits, n
 
 
 @kernel
-def _clear_of_block(center, radius, turn, position, voxels, place):
-    """Tell whether a sphere of the arbor's frame misses the block's box of voxels."""
+def _voxel_range(middle, extent, grid, axis):
+    """First and last voxel along an axis, open ends cut off, periodic ones not."""
+    low = int(np.floor((middle[axis] - extent) / grid.size[axis]))
+    high = int(np.floor((middle[axis] + extent) / grid.size[axis]))
+    if grid.period[axis] > 0.0:
+        return low, high
+    return max(low, 0), min(high, grid.shape[axis] - 1)
+
+
+@kernel
+def _look(layer, reach, work):
+    """List the rows of a layer that may be close to the segment in scratch rows 0, 1.
+
+    `reach` is the axon's radius plus the largest gap and the slack. Returns how many
+    rows of the layer stand in `work.found`.
+    """
+    scratch, middle, half, grid = work.scratch, work.middle, work.half, layer.grid
+    _middle_of(scratch[0], scratch[1], grid, middle)
+    square, m = 0.0, 0
+    for axis in range(3):
+        half[axis] = 0.5 * (scratch[1, axis] - scratch[0, axis])
+        square += float(half[axis]) ** 2
+    half_length, reach = np.float32(np.sqrt(square)), np.float32(reach)
+    extent = layer.reach + reach
+    z_low, z_high = _voxel_range(middle, abs(half[2]) + extent, grid, 2)
+    if z_low > z_high:
+        return m
+    x_low, x_high = _voxel_range(middle, abs(half[0]) + extent, grid, 0)
+    y_low, y_high = _voxel_range(middle, abs(half[1]) + extent, grid, 1)
+    x_middle, y_middle = middle[0], middle[1]
+    for x in range(x_low, x_high + 1):
+        turns_x = x // grid.shape[0]
+        middle[0] = x_middle - turns_x * grid.period[0]
+        for y in range(y_low, y_high + 1):
+            turns_y = y // grid.shape[1]
+            middle[1] = y_middle - turns_y * grid.period[1]
+            column = (x - turns_x * grid.shape[0]) * grid.shape[1]
+            column = (column + y - turns_y * grid.shape[1]) * grid.shape[2]
+            low, high = layer.first[column + z_low], layer.first[column + z_high + 1]
+            if low == high:
+                continue
+            rows = layer.shapes[:, low:high]
+            _mark_near(middle, half, half_length, reach, rows, work.near)
+            m = _list_marked(work.near, high - low, low, work.found, m)
+    return m
+
+
+@kernel
+def _clear_of(center, radius, turn, position, grid, place):
+    """Tell whether a sphere of the arbor's frame misses the open sides of the grid."""
     _place(center, turn, position, place)
     square = 0.0
     for axis in range(3):
-        value = place[axis] - voxels.origin[axis]
-        top = voxels.shape[axis] * voxels.size
-        beyond = max(-value, value - top, 0.0)
-        square += beyond * beyond
+        if grid.period[axis] == 0.0:
+            value = place[axis] - grid.origin[axis]
+            beyond = max(-value, value - grid.shape[axis] * grid.size[axis], 0.0)
+            square += beyond * beyond
     return square > radius * radius
 
 
 @kernel
-def _collect(axons, targets, placed, voxels, rules, cells, pre, position, work, hits, n):
-    """Collect the hits of one cell's axon, its soma at `position`."""
-    scratch, stamp = work[0], work[5]
-    arbor, turn = placed.arbor[pre], placed.turn[pre]
+def _collect(axons, layers, placed, rules, cells, pre, work, hits):
+    """Collect the hits of one cell's axon in the layers of one block."""
+    scratch, n = work.scratch, 0
+    arbor, turn, position = placed.arbor[pre], placed.turn[pre], placed.position[pre]
     for run in range(axons.run_first[arbor], axons.run_first[arbor + 1]):
-        if _clear_of_block(
-            axons.run_center[run],
-            axons.run_radius[run] + rules.slack,
-            turn,
-            position,
-            voxels,
-            scratch[0],
-        ):
-            continue
-        for axon in range(axons.run_bounds[run], axons.run_bounds[run + 1]):
-            _place(axons.start[axon], turn, position, scratch[0])
-            _place(axons.end[axon], turn, position, scratch[1])
-            stamp[0] += 1
-            hits, n = _look(
-                axons, targets, placed, voxels, rules, cells, pre, axon, work, hits, n
-            )
+        center, radius = axons.run_center[run], axons.run_radius[run] + rules.slack
+        for targets, layer in layers:
+            if _clear_of(center, radius, turn, position, layer.grid, scratch[0]):
+                continue
+            for axon in range(axons.run_bounds[run], axons.run_bounds[run + 1]):
+                _place(axons.start[axon], turn, position, scratch[0])
+                _place(axons.end[axon], turn, position, scratch[1])
+                reach = max(axons.start_radius[axon], axons.end_radius[axon])
+                m = _look(layer, reach + rules.max_gap + rules.slack, work)
+                if m:
+                    hits, n = _test(
+                        axons,
+                        targets,
+                        placed,
+                        layer,
+                        rules,
+                        cells,
+                        pre,
+                        axon,
+                        work,
+                        m,
+                        hits,
+                        n,
+                    )
     return hits, n
 
 
@@ -520,13 +535,13 @@ def _grow_sites(sites):
 
 
 @kernel
-def _append_sites(axons, targets, hits, order, low, high, sites, sites_n):
+def _append_sites(axons, hits, order, low, high, sites, sites_n):
     while sites_n + high - low > sites.axon.size:
         sites = _grow_sites(sites)
     for i in range(low, high):
         hit = order[i]
         sites.axon[sites_n] = axons.segment[hits.axon[hit]]
-        sites.target[sites_n] = targets.segment[hits.target[hit]]
+        sites.target[sites_n] = hits.target[hit]
         sites.axon_fraction[sites_n] = hits.axon_fraction[hit]
         sites.target_fraction[sites_n] = hits.target_fraction[hit]
         sites.gap[sites_n] = hits.gap[hit]
@@ -546,60 +561,35 @@ def _new_sites(size):
 
 
 @kernel
-def _images(length, reach):
-    """How many neighbouring copies of a periodic box an axon can come from."""
-    return int(np.ceil(reach / length)) if length > 0.0 else 0
+def _new_work(layers):
+    """Allocate a task's memory: no run is longer than the longest column of voxels,
+    and one axon segment finds no row twice."""
+    rows = longest = 0
+    for _, layer in layers:
+        rows, longest = max(rows, layer.owner.size), max(longest, layer.longest)
+    return Work(
+        np.zeros((4, 3)),
+        np.zeros(3, np.float32),
+        np.zeros(3, np.float32),
+        np.zeros(8 * (longest // 8 + 2), np.uint8),
+        np.zeros(rows, np.int32),
+    )
 
 
 @kernel
-def _all_images(axons, targets, placed, voxels, rules, cells, pre, work, hits):
-    """Collect a cell's hits from the box itself and, under wrap, from its copies."""
-    arbor, n = placed.arbor[pre], 0
-    position = np.zeros(3)
-    span_x = voxels.shape[0] * voxels.size + 2.0 * axons.reach[arbor] + rules.wrap_x
-    span_y = voxels.shape[1] * voxels.size + 2.0 * axons.reach[arbor] + rules.wrap_y
-    many_x = _images(rules.wrap_x, span_x)
-    many_y = _images(rules.wrap_y, span_y)
-    for i in range(-many_x, many_x + 1):
-        for j in range(-many_y, many_y + 1):
-            position[0] = placed.position[pre, 0] + i * rules.wrap_x
-            position[1] = placed.position[pre, 1] + j * rules.wrap_y
-            position[2] = placed.position[pre, 2]
-            hits, n = _collect(
-                axons,
-                targets,
-                placed,
-                voxels,
-                rules,
-                cells,
-                pre,
-                position,
-                work,
-                hits,
-                n,
-            )
-    return hits, n
-
-
-@kernel
-def search(axons, targets, placed, voxels, rules, cells, pre_cells):
+def search(axons, layers, placed, rules, cells, pre_cells):
     """Find the appositions of the axons of `pre_cells` on the cells of one block.
 
-    Returns Pairs (by presynaptic cell in the order given, then by cell of the block,
-    `post` counting within the block) and their Sites.
+    `layers` is a tuple of (Targets, Layer). Returns Pairs (by presynaptic cell in the
+    order given, then by cell of the block, `post` counting within it) and their Sites.
     """
-    scratch, stamp = np.zeros((4, 3)), np.zeros(1, np.int32)
-    middle, half = np.zeros(3, np.float32), np.zeros(3, np.float32)
-    stamps = np.zeros(voxels.radius.size, np.int32)
-    work = (scratch, middle, half, np.zeros(3), stamps, stamp)
+    work = _new_work(layers)
     hits, sites, sites_n = _new_hits(1024), _new_sites(4096), 0
     post = np.zeros(1024, np.int32)
     pre_out, count = np.zeros(1024, np.int32), np.zeros(1024, np.int32)
     first, pairs_n = np.zeros(cells.size + 1, np.int64), 0
     for pre in pre_cells:
-        hits, n = _all_images(
-            axons, targets, placed, voxels, rules, cells, pre, work, hits
-        )
+        hits, n = _collect(axons, layers, placed, rules, cells, pre, work, hits)
         order = np.zeros(n, np.int64)
         _group_by_owner(hits, n, first, order)
         place = _axon_places(axons, hits, n)
@@ -610,7 +600,7 @@ def search(axons, targets, placed, voxels, rules, cells, pre_cells):
             _sort_hits(order, low, high, hits.gap, hits.axon, hits.target)
             kept = _thin(order, low, high, place, rules.min_spacing)
             sites, sites_n = _append_sites(
-                axons, targets, hits, order, low, low + kept, sites, sites_n
+                axons, hits, order, low, low + kept, sites, sites_n
             )
             if pairs_n == post.size:
                 post, pre_out, count = _longer(post), _longer(pre_out), _longer(count)

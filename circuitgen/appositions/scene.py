@@ -13,17 +13,18 @@ from circuitgen.morphology.arbor import Arbor, Kind
 # Bits of the kinds of target; a presynaptic type's mask is a sum of them.
 TARGET_BITS = {"soma": 1, "axon_initial_segment": 2, "basal": 4, "apical": 8}
 TARGET_NAMES = {bit: name for name, bit in TARGET_BITS.items()}
+_THIN_SHARE = 0.95
 _KIND_BITS = np.zeros(8, np.uint8)
 _KIND_BITS[[Kind.SOMA, Kind.BASAL, Kind.APICAL]] = 1, 4, 8
 
 
 @dataclass(frozen=True)
 class Reach:
-    """How far each arbor's targets go: sideways, below and above the soma (um)."""
+    """How far each arbor's centre lines go sideways, and their lowest and highest z."""
 
     side_um: np.ndarray
-    below_um: np.ndarray
-    above_um: np.ndarray
+    lowest_um: np.ndarray
+    highest_um: np.ndarray
 
 
 @dataclass(frozen=True)
@@ -31,9 +32,9 @@ class Scene:
     """Cells and their arbors, ready to be searched; positions in micrometres."""
 
     axons: Axons
-    targets: Targets
+    targets: tuple[Targets, ...]
     placed: Placed
-    target_reach: Reach
+    reach: Reach
     max_gap_um: float
     min_spacing_um: float
     autapses: bool
@@ -61,10 +62,19 @@ def _segments(chosen: Sequence[np.ndarray]) -> np.ndarray:
     return np.concatenate(chosen).astype(np.int32)
 
 
-def pack_targets(arbors: Sequence[Arbor]) -> Targets:
-    """Pack the target capsules of all arbors."""
+def _radius(arbor: Arbor) -> np.ndarray:
+    return np.maximum(arbor.start_radius_um, arbor.end_radius_um)
+
+
+def _pack_targets(arbors: Sequence[Arbor], low_um: float, high_um: float) -> Targets:
+    """Pack the target capsules of all arbors with a radius above low, up to high."""
     bits = [target_bits(arbor) for arbor in arbors]
-    chosen = [np.flatnonzero(bit) for bit in bits]
+    chosen = [
+        np.flatnonzero(
+            (bit > 0) & (_radius(arbor) > low_um) & (_radius(arbor) <= high_um)
+        )
+        for bit, arbor in zip(bits, arbors, strict=True)
+    ]
     return Targets(
         first=_first(chosen),
         start=_packed(arbors, chosen, "start_um"),
@@ -74,6 +84,18 @@ def pack_targets(arbors: Sequence[Arbor]) -> Targets:
         segment=_segments(chosen),
         kind=np.concatenate([b[i] for b, i in zip(bits, chosen, strict=True)]),
     )
+
+
+def pack_targets(arbors: Sequence[Arbor]) -> tuple[Targets, ...]:
+    """Pack targets in two layers, thin and thick.
+
+    A search looks as far as the thickest target of a layer reaches, so the somata and
+    the few thick trunks are kept apart from the many thin branches.
+    """
+    radii = [_radius(arbor)[target_bits(arbor) > 0] for arbor in arbors]
+    limit = float(np.quantile(np.concatenate(radii), _THIN_SHARE))
+    layers = _pack_targets(arbors, -np.inf, limit), _pack_targets(arbors, limit, np.inf)
+    return tuple(layer for layer in layers if layer.kind.size)
 
 
 def _run_spheres(start, end, radius, bounds) -> tuple[np.ndarray, np.ndarray]:
@@ -104,7 +126,6 @@ def pack_axons(arbors: Sequence[Arbor]) -> Axons:
     ]
     bounds = np.concatenate([*begins, first[-1:]])
     center, run_radius = _run_spheres(start, end, radius, bounds)
-    far = np.maximum(np.linalg.norm(start, axis=1), np.linalg.norm(end, axis=1)) + radius
     return Axons(
         first=first,
         start=start,
@@ -112,12 +133,6 @@ def pack_axons(arbors: Sequence[Arbor]) -> Axons:
         start_radius=start_radius,
         end_radius=end_radius,
         segment=_segments(chosen),
-        reach=np.array(
-            [
-                far[low:high].max(initial=0.0)
-                for low, high in zip(first[:-1], first[1:], strict=True)
-            ]
-        ),
         run_first=_first(begins),
         run_bounds=bounds,
         run_center=center,
@@ -125,20 +140,13 @@ def pack_axons(arbors: Sequence[Arbor]) -> Axons:
     )
 
 
-def _reach_of(targets: Targets) -> Reach:
-    """Measure how far the targets of each arbor go from its soma."""
-    begins = targets.first[:-1]
-    radius = np.maximum(targets.start_radius, targets.end_radius)
-    side = np.maximum(
-        np.hypot(targets.start[:, 0], targets.start[:, 1]),
-        np.hypot(targets.end[:, 0], targets.end[:, 1]),
-    )
-    low = np.minimum(targets.start[:, 2], targets.end[:, 2])
-    high = np.maximum(targets.start[:, 2], targets.end[:, 2])
+def _reach_of(arbors: Sequence[Arbor]) -> Reach:
+    """Measure how far the cable of each arbor goes from its soma."""
+    ends = [np.concatenate([arbor.start_um, arbor.end_um]) for arbor in arbors]
     return Reach(
-        np.maximum.reduceat(side + radius, begins),
-        np.minimum.reduceat(low - radius, begins),
-        np.maximum.reduceat(high + radius, begins),
+        np.array([np.hypot(end[:, 0], end[:, 1]).max() for end in ends]),
+        np.array([end[:, 2].min() for end in ends]),
+        np.array([end[:, 2].max() for end in ends]),
     )
 
 
@@ -172,7 +180,6 @@ def make_scene(
         Periods of the box in x and y; 0 where the edge is open.
     """
     angle = np.deg2rad(np.asarray(azimuth_deg, dtype=np.float64))
-    targets = pack_targets(arbors)
     placed = Placed(
         arbor=np.asarray(arbor_index, dtype=np.int64),
         position=np.ascontiguousarray(position_um, dtype=np.float64),
@@ -181,9 +188,9 @@ def make_scene(
     )
     return Scene(
         axons=pack_axons(arbors),
-        targets=targets,
+        targets=pack_targets(arbors),
         placed=placed,
-        target_reach=_reach_of(targets),
+        reach=_reach_of(arbors),
         max_gap_um=float(max_gap_um),
         min_spacing_um=float(min_spacing_um),
         autapses=autapses,

@@ -11,10 +11,8 @@ import numpy as np
 from circuitgen.appositions import kernels
 from circuitgen.appositions.scene import Scene
 
-# Voxels of about the reach of a capsule keep lists short and few (see DEVELOPERS.md).
-_SMALLEST_VOXEL_UM = 2.0
+_VOXEL_SHARE = 1.0
 _MOST_VOXELS = 64_000_000
-_MOST_ENTRIES = 2**31 - 1
 _CELLS_PER_TASK = 32
 # Largest relative error of a single-precision coordinate, with room for a few sums.
 _SINGLE_ERROR = 1e-6
@@ -57,68 +55,63 @@ class Appositions:
 
 
 def _box_of(scene: Scene, cells: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Lowest and highest corner of a box around all targets of `cells`."""
-    arbor = scene.placed.arbor[cells]
-    position = scene.placed.position[cells]
-    reach = scene.target_reach
-    side = reach.side_um[arbor]
-    low = position - np.column_stack([side, side, -reach.below_um[arbor]])
-    high = position + np.column_stack([side, side, reach.above_um[arbor]])
+    """Lowest and highest corner of a box around the centre lines of `cells`."""
+    arbor, position = scene.placed.arbor[cells], scene.placed.position[cells]
+    side = scene.reach.side_um[arbor]
+    low = position + np.column_stack([-side, -side, scene.reach.lowest_um[arbor]])
+    high = position + np.column_stack([side, side, scene.reach.highest_um[arbor]])
     return low.min(axis=0), high.max(axis=0)
 
 
-def _allowance_um(scene: Scene) -> float:
-    """Radius that nine in ten axon segments do not exceed; thicker ones look farther."""
-    axons = scene.axons
-    if not axons.start.size:
-        return 0.0
-    return float(np.quantile(np.maximum(axons.start_radius, axons.end_radius), 0.9))
-
-
-def _make_voxels(scene, cells, allowance_um) -> tuple[kernels.Voxels, float]:
-    """List the targets of a block by voxel; also return the slack of its extent."""
+def _make_grid(scene: Scene, cells: np.ndarray, reach_um: float) -> kernels.Grid:
+    """Lay voxels of about half the reach over a block; a period holds whole voxels."""
     low, high = _box_of(scene, cells)
-    slack = _SINGLE_ERROR * max(float((high - low).max()), 1.0)
-    margin = scene.max_gap_um + allowance_um + slack
-    extent = high - low + 2 * margin
-    size = max(_SMALLEST_VOXEL_UM, margin, np.cbrt(extent.prod() / _MOST_VOXELS))
-    origin = low - margin
-    shape = np.maximum(np.ceil(extent / size), 1).astype(np.int64)
-    parts = kernels.place_targets(scene.targets, scene.placed, cells, origin)
-    middle, half, half_length, radius, owner, row, kind = parts
-    first = np.zeros(int(shape.prod()) + 1, np.int64)
-    geometry = (middle, half, half_length, radius, margin, size, shape)
-    kernels.count_entries(*geometry, first[:-1])
-    np.cumsum(first, out=first)
-    if first[-1] > _MOST_ENTRIES:
-        raise OverflowError("a block lists too many targets; it must be smaller")
-    entries = np.zeros(int(first[-1]), np.int32)
-    kernels.fill_entries(*geometry, first, entries)
-    voxels = kernels.Voxels(
-        origin=origin,
-        size=size,
-        shape=shape,
+    period = np.array([*scene.wrap_um, 0.0])
+    extent = np.where(period > 0, period, high - low + 1e-3)
+    size = max(_VOXEL_SHARE * reach_um, np.cbrt(extent.prod() / _MOST_VOXELS))
+    shape = np.where(period > 0, np.floor(extent / size), np.ceil(extent / size))
+    shape = np.maximum(shape, 1).astype(np.int64)
+    sizes = np.where(period > 0, extent / shape, size)
+    return kernels.Grid(origin=low, size=sizes, shape=shape, period=period)
+
+
+def _make_layer(scene, targets, cells) -> kernels.Layer:
+    """Sort the targets of a block by voxel."""
+    radius = np.maximum(targets.start_radius, targets.end_radius)
+    half_length = np.linalg.norm(targets.end - targets.start, axis=1) / 2
+    reach_um = float((radius + half_length).max())
+    grid = _make_grid(scene, cells, reach_um + scene.max_gap_um)
+    first = np.zeros(int(grid.shape.prod()) + 1, np.int32)
+    kernels.count_targets(targets, scene.placed, cells, grid, first)
+    n = int(first[-1])
+    layer = kernels.Layer(
+        grid=grid,
         first=first,
-        entries=entries,
-        middle=middle,
-        half=half,
-        half_length=half_length,
-        radius=radius,
-        cell=owner,
-        row=row,
-        kind=kind,
+        shapes=np.zeros((8, n), np.float32),
+        owner=np.zeros(n, np.int32),
+        row=np.zeros(n, np.int32),
+        kind=np.zeros(n, np.uint8),
+        reach=reach_um,
+        longest=int(np.diff(first[grid.shape[2] - 1 :: grid.shape[2]], prepend=0).max()),
     )
-    return voxels, slack
+    kernels.fill_layer(targets, scene.placed, cells, layer)
+    return layer
 
 
-def _search_tasks(scene, voxels, rules, cells, threads):
+def _slack_um(scene: Scene, layers) -> float:
+    """Room for the rounding of single-precision coordinates in the widest layer."""
+    extents = [(layer.grid.shape * layer.grid.size).max() for _, layer in layers]
+    return _SINGLE_ERROR * max(extents)
+
+
+def _search_tasks(scene, layers, rules, cells, threads):
     """Search all axons in tasks of a few cells; results in order of the tasks."""
     everyone = np.arange(scene.placed.arbor.size)
     tasks = [
         everyone[begin : begin + _CELLS_PER_TASK]
         for begin in range(0, everyone.size, _CELLS_PER_TASK)
     ]
-    world = (scene.axons, scene.targets, scene.placed, voxels, rules, cells)
+    world = (scene.axons, layers, scene.placed, rules, cells)
     pool = ThreadPoolExecutor(threads)
     try:
         return list(pool.map(lambda pre: kernels.search(*world, pre), tasks))
@@ -171,17 +164,14 @@ def find_appositions(
     """
     everyone = np.arange(scene.placed.arbor.size)
     cells = everyone if cells is None else np.asarray(cells, dtype=np.int64)
-    allowance_um = _allowance_um(scene)
-    voxels, slack = _make_voxels(scene, cells, allowance_um)
+    layers = tuple(
+        (targets, _make_layer(scene, targets, cells)) for targets in scene.targets
+    )
     rules = kernels.Rules(
         max_gap=scene.max_gap_um,
         min_spacing=scene.min_spacing_um,
-        allowance=allowance_um,
-        slack=slack,
-        slack32=np.float32(slack),
-        wrap_x=float(scene.wrap_um[0]),
-        wrap_y=float(scene.wrap_um[1]),
+        slack=_slack_um(scene, layers),
         autapses=scene.autapses,
     )
-    results = _search_tasks(scene, voxels, rules, cells, threads or os.cpu_count())
+    results = _search_tasks(scene, layers, rules, cells, threads or os.cpu_count())
     return _in_order(results, cells)
