@@ -562,8 +562,11 @@ def _new_sites(size):
 
 @kernel
 def _new_work(layers):
-    """Allocate a task's memory: no run is longer than the longest column of voxels,
-    and one axon segment finds no row twice."""
+    """Allocate a task's memory.
+
+    No run is longer than the longest column of voxels, and one axon segment finds no
+    row twice.
+    """
     rows = longest = 0
     for _, layer in layers:
         rows, longest = max(rows, layer.owner.size), max(longest, layer.longest)

@@ -38,7 +38,9 @@ def _tree(rng, total_um, branch_um, kind, radius_um):
         else:
             stem = paths[rng.integers(len(paths))]
             origin = stem[rng.integers(len(stem))]
-        paths.append(_walk(rng, origin, direction / np.linalg.norm(direction), steps, 0.2))
+        paths.append(
+            _walk(rng, origin, direction / np.linalg.norm(direction), steps, 0.2)
+        )
     start = np.concatenate([path[:-1] for path in paths])
     end = np.concatenate([path[1:] for path in paths])
     n = len(start)
@@ -56,9 +58,7 @@ def make_arbor(rng, name: str) -> Arbor:
     columns = [np.concatenate(part) for part in zip(*parts, strict=True)]
     start, end, kind, radius = columns
     n = len(kind)
-    bounds = np.concatenate(
-        [[0.0], np.cumsum(np.linalg.norm(end - start, axis=1))]
-    )
+    bounds = np.concatenate([[0.0], np.cumsum(np.linalg.norm(end - start, axis=1))])
     return Arbor(
         name=name,
         start_um=start,
@@ -72,8 +72,10 @@ def make_arbor(rng, name: str) -> Arbor:
         path_end_um=bounds[1:].copy(),
         cable_start_um=bounds[:-1].copy(),
         cable_end_um=bounds[1:].copy(),
-        sample_id=np.arange(1, n + 1),
-        sample_cable_um=bounds,
+        first_piece=np.arange(n),
+        last_piece=np.arange(n),
+        piece_number=np.arange(1, n + 1),
+        piece_bounds_um=bounds,
     )
 
 

@@ -1,0 +1,259 @@
+"""From a reconstruction to an Arbor: sections, corners, equal parts.
+
+The same neuron gives the same segments however its file is sampled, numbered or
+ordered: sections run between soma, branch points, changes of kind and tips; only their
+corners count; branches are ordered by where they end.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+
+from circuitgen.morphology.arbor import Arbor, Kind
+from circuitgen.morphology.reconstruction import Reconstruction
+from circuitgen.morphology.simplify import corners
+
+# Rows of the turn that brings the named axis of a file up to z.
+_UPRIGHT = {
+    "x": ((0, 1, 0), (0, 0, 1), (1, 0, 0)),
+    "y": ((1, 0, 0), (0, 0, -1), (0, 1, 0)),
+    "z": ((1, 0, 0), (0, 1, 0), (0, 0, 1)),
+    "-x": ((0, 1, 0), (0, 0, -1), (-1, 0, 0)),
+    "-y": ((1, 0, 0), (0, 0, 1), (0, -1, 0)),
+    "-z": ((1, 0, 0), (0, -1, 0), (0, 0, -1)),
+}
+
+
+@dataclass(frozen=True)
+class _Section:
+    """Samples of one unbranched stretch, the sample (or soma) before it included.
+
+    `points_um` and `radii_um` have one row more than `samples` unless the section
+    begins after a gap. `skip_um` is the stretch at its start inside the soma.
+    """
+
+    samples: np.ndarray
+    points_um: np.ndarray
+    radii_um: np.ndarray
+    skip_um: float
+
+
+def _children(parent: np.ndarray) -> dict[int, list[int]]:
+    children: dict[int, list[int]] = {}
+    for sample, above in enumerate(parent.tolist()):
+        children.setdefault(above, []).append(sample)
+    return children
+
+
+def _run(start: int, kind: np.ndarray, bridged, children) -> list[int]:
+    """Follow a section from its first sample to the branch, change or tip at its end."""
+    run = [start]
+    while True:
+        following = children.get(run[-1], ())
+        if len(following) != 1:
+            return run
+        child = following[0]
+        if kind[child] != kind[start] or bridged[child]:
+            return run
+        run.append(child)
+
+
+def _section(r: Reconstruction, points: np.ndarray, run: list[int]) -> _Section:
+    samples = np.array(run)
+    first = run[0]
+    above = r.parent[first]
+    own, radii = points[samples], r.radius_um[samples]
+    if r.bridged[first]:
+        return _Section(samples, own, radii, 0.0)
+    if above >= 0:
+        same = r.kind[above] == r.kind[first]
+        before, radius = points[above], r.radius_um[above] if same else radii[0]
+        skip = 0.0
+    else:
+        before, radius = points[r.kind.size + first], radii[0]
+        step = np.linalg.norm(own[0] - before)
+        skip = min(step, float(r.soma.radius_um.max()))
+    return _Section(
+        samples, np.vstack([before, own]), np.concatenate([[radius], radii]), skip
+    )
+
+
+def _sections(r: Reconstruction, points: np.ndarray) -> Iterator[tuple[_Section, int]]:
+    """Yield sections from the soma outward with the sample that each continues."""
+    children = _children(r.parent)
+
+    def ordered(starts: list[int]) -> list[list[int]]:
+        runs = [_run(start, r.kind, r.bridged, children) for start in starts]
+        where = np.round(points, 6)
+        return sorted(runs, key=lambda run: (int(r.kind[run[0]]), *where[run[-1]]))
+
+    pending = [(run, -1) for run in reversed(ordered(children.get(-1, [])))]
+    while pending:
+        run, above = pending.pop()
+        yield _section(r, points, run), above
+        following = ordered(children.get(run[-1], []))
+        pending += [(child, run[-1]) for child in reversed(following)]
+
+
+def _begin_after(section: _Section, along: np.ndarray) -> tuple[np.ndarray, ...]:
+    """Cut the stretch inside the soma off a section's points, radii and lengths."""
+    points, radii, skip = section.points_um, section.radii_um, section.skip_um
+    if skip <= 0:
+        return points, radii, along
+    if skip >= along[1] - 1e-9:
+        return points[1:], radii[1:], along[1:]
+    share = skip / along[1]
+    edge = points[0] + share * (points[1] - points[0])
+    return (
+        np.vstack([edge, points[1:]]),
+        radii,
+        np.concatenate([[skip], along[1:]]),
+    )
+
+
+def _cut(low: float, high: float, length: float, spacing: float, stop: float):
+    """Fractions (0 to 1) at which a straight piece from path low to high is cut."""
+    bounds = [0.0, 1.0]
+    if low < stop < high:
+        bounds.insert(1, (stop - low) / (high - low))
+    cuts = [0.0]
+    for a, b in zip(bounds[:-1], bounds[1:], strict=True):
+        parts = max(int(np.ceil((b - a) * length / spacing - 1e-9)), 1)
+        cuts += [a + (b - a) * (k + 1) / parts for k in range(parts)]
+    return np.array(cuts)
+
+
+class _Builder:
+    """Collects segments and pieces of the file, section by section."""
+
+    def __init__(self, r: Reconstruction, spacing_um: float, ais_um: float):
+        self.r, self.spacing_um, self.ais_um = r, spacing_um, ais_um
+        self.rows: list[tuple[np.ndarray, ...]] = []
+        self.piece_number: list[np.ndarray] = []
+        self.piece_length: list[np.ndarray] = []
+        self.cable_um, self.pieces_n, self.segments_n = 0.0, 0, 0
+        self.path_at = np.zeros(r.kind.size)
+        self.last_segment = np.full(r.kind.size, -1, np.int64)
+
+    def _note_pieces(self, numbers: np.ndarray, lengths: np.ndarray) -> None:
+        self.piece_number.append(numbers)
+        self.piece_length.append(lengths)
+        self.pieces_n += len(numbers)
+        self.cable_um += float(lengths.sum())
+
+    def _add(self, *columns: np.ndarray) -> None:
+        self.rows.append(columns)
+        self.segments_n += len(columns[0])
+
+    def add_soma(self, start: np.ndarray, end: np.ndarray) -> None:
+        """Add the soma's capsules, one piece of the file each."""
+        soma, n = self.r.soma, len(start)
+        lengths = np.linalg.norm(end - start, axis=1)
+        bounds = np.concatenate([[0.0], np.cumsum(lengths)])
+        zeros, pieces = np.zeros(n), np.arange(n)
+        self._note_pieces(soma.number, lengths)
+        self._add(
+            start, end, soma.radius_um, soma.radius_um, np.full(n, Kind.SOMA),
+            np.full(n, -1), np.zeros(n, bool), zeros, zeros, bounds[:-1], bounds[1:],
+            pieces, pieces,
+        )  # fmt: skip
+
+    def add_section(self, section: _Section, above: int, points: np.ndarray) -> None:
+        """Add one section: its pieces of the file, then its segments."""
+        r, first = self.r, section.samples[0]
+        steps = np.diff(section.points_um, axis=0)
+        lengths = np.linalg.norm(steps, axis=1)
+        along = np.concatenate([[0.0], np.cumsum(lengths)])
+        path = self.path_at[above] if above >= 0 else 0.0
+        if r.bridged[first]:
+            path += float(np.linalg.norm(points[first] - points[above]))
+        self.path_at[section.samples] = (
+            path + along[-len(section.samples) :] - section.skip_um
+        )
+        parent = self.last_segment[above] if above >= 0 else -1
+        before = self.segments_n
+        base, piece = self.cable_um, self.pieces_n
+        numbers = r.number[section.samples]
+        self._note_pieces(numbers[len(numbers) - len(lengths) :], lengths)
+        self._add_segments(section, along, path, parent, base, piece)
+        grown = self.segments_n > before
+        self.last_segment[section.samples] = self.segments_n - 1 if grown else parent
+
+    def _add_segments(self, section, along, path, parent, base, piece) -> None:
+        points, radii, inner = _begin_after(section, along)
+        kept = corners(points, radii) if len(points) > 1 else np.zeros(0, int)
+        kind = self.r.kind[section.samples[0]]
+        stop = self.ais_um if kind == Kind.AXON else -1.0
+        for low, high in zip(kept[:-1], kept[1:], strict=True):
+            length = float(np.linalg.norm(points[high] - points[low]))
+            if length <= 0.0:
+                continue
+            from_soma = path - section.skip_um
+            a, b = from_soma + inner[low], from_soma + inner[high]
+            cuts = _cut(a, b, length, self.spacing_um, stop)
+            n = len(cuts) - 1
+            ends = points[low] + cuts[:, None] * (points[high] - points[low])
+            radius = radii[low] + cuts * (radii[high] - radii[low])
+            cable = inner[low] + cuts * (inner[high] - inner[low])
+            paths = a + cuts * (b - a)
+            # Cable coordinates lead to pieces by the section's own boundaries.
+            begin = np.searchsorted(along, cable[:-1], side="right") - 1
+            end = np.searchsorted(along, cable[1:], side="left") - 1
+            begin = np.clip(begin, 0, len(along) - 2)
+            end = np.clip(end, begin, len(along) - 2)
+            before = np.concatenate([[parent], self.segments_n + np.arange(n - 1)])
+            self._add(
+                ends[:-1], ends[1:], radius[:-1], radius[1:], np.full(n, kind), before,
+                paths[1:] <= stop + 1e-9, paths[:-1], paths[1:], base + cable[:-1],
+                base + cable[1:], piece + begin, piece + end,
+            )  # fmt: skip
+            parent = self.segments_n - 1
+
+    def arbor(self) -> Arbor:
+        """Join everything."""
+        columns = [np.concatenate(part) for part in zip(*self.rows, strict=True)]
+        lengths = np.concatenate(self.piece_length)
+        types = (
+            float, float, float, float, np.int8, np.int32, bool, float, float, float,
+            float, np.int32, np.int32,
+        )  # fmt: skip
+        return Arbor(
+            self.r.name,
+            *(c.astype(t) for c, t in zip(columns, types, strict=True)),
+            piece_number=np.concatenate(self.piece_number),
+            piece_bounds_um=np.concatenate([[0.0], np.cumsum(lengths)]),
+        )
+
+
+def build_arbor(
+    reconstruction: Reconstruction,
+    *,
+    upright: str,
+    min_spacing_um: float,
+    ais_um: float,
+) -> Arbor:
+    """Turn a reconstruction into capsules, soma centre at the origin, pia toward z.
+
+    Parameters
+    ----------
+    reconstruction : Reconstruction
+        From `read_reconstruction`.
+    upright : str
+        The file's axis toward the pia, ``x`` to ``-z``.
+    min_spacing_um : float
+        No segment is longer.
+    ais_um : float
+        Path length from the soma up to which axon is axon initial segment.
+    """
+    r, turn = reconstruction, np.array(_UPRIGHT[upright], float).T
+    center = r.soma.center_um
+    # Samples first, then the point at which each would leave the soma.
+    points = np.vstack([r.position_um - center, r.stem_um - center]) @ turn
+    builder = _Builder(r, min_spacing_um, ais_um)
+    builder.add_soma((r.soma.start_um - center) @ turn, (r.soma.end_um - center) @ turn)
+    for section, above in _sections(r, points):
+        builder.add_section(section, above, points)
+    return builder.arbor()
