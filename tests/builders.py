@@ -36,6 +36,7 @@ def arbor_from_segments(start, end, kind, radius=0.3, initial=None, name="made")
         first_piece=np.arange(kind.size),
         last_piece=np.arange(kind.size),
         piece_number=np.arange(1, kind.size + 1),
+        piece_backward=np.zeros(len(kind), bool),
         piece_bounds_um=bounds,
     )
 

@@ -49,6 +49,8 @@ class Arbor:
         First and last piece of the file that the segment stands for.
     piece_number : int64 (m,)
         SWC number of the sample that ends each piece.
+    piece_backward : bool (m,)
+        True where the file runs the piece toward the soma.
     piece_bounds_um : float64 (m + 1,)
         Cable coordinate of the piece boundaries, increasing from 0.
     """
@@ -68,6 +70,7 @@ class Arbor:
     first_piece: np.ndarray
     last_piece: np.ndarray
     piece_number: np.ndarray
+    piece_backward: np.ndarray
     piece_bounds_um: np.ndarray
 
     def __post_init__(self):
@@ -117,4 +120,5 @@ class Arbor:
         piece = np.clip(piece, self.first_piece[segment], self.last_piece[segment])
         length = bounds[piece + 1] - bounds[piece]
         inside = (cable - bounds[piece]) / np.where(length > 0, length, 1.0)
+        inside = np.where(self.piece_backward[piece], 1.0 - inside, inside)
         return self.piece_number[piece], np.clip(inside, 0.0, 1.0)

@@ -133,13 +133,15 @@ class _Builder:
         self.r, self.spacing_um, self.ais_um = r, spacing_um, ais_um
         self.rows: list[tuple[np.ndarray, ...]] = []
         self.piece_number: list[np.ndarray] = []
+        self.piece_backward: list[np.ndarray] = []
         self.piece_length: list[np.ndarray] = []
         self.cable_um, self.pieces_n, self.segments_n = 0.0, 0, 0
         self.path_at = np.zeros(r.kind.size)
         self.last_segment = np.full(r.kind.size, -1, np.int64)
 
-    def _note_pieces(self, numbers: np.ndarray, lengths: np.ndarray) -> None:
+    def _note_pieces(self, numbers, backward, lengths) -> None:
         self.piece_number.append(numbers)
+        self.piece_backward.append(backward)
         self.piece_length.append(lengths)
         self.pieces_n += len(numbers)
         self.cable_um += float(lengths.sum())
@@ -154,7 +156,7 @@ class _Builder:
         lengths = np.linalg.norm(end - start, axis=1)
         bounds = np.concatenate([[0.0], np.cumsum(lengths)])
         zeros, pieces = np.zeros(n), np.arange(n)
-        self._note_pieces(soma.number, lengths)
+        self._note_pieces(soma.number, np.zeros(n, bool), lengths)
         self._add(
             start, end, soma.radius_um, soma.radius_um, np.full(n, Kind.SOMA),
             np.full(n, -1), np.zeros(n, bool), zeros, zeros, bounds[:-1], bounds[1:],
@@ -176,8 +178,8 @@ class _Builder:
         parent = self.last_segment[above] if above >= 0 else -1
         before = self.segments_n
         base, piece = self.cable_um, self.pieces_n
-        numbers = r.number[section.samples]
-        self._note_pieces(numbers[len(numbers) - len(lengths) :], lengths)
+        own = section.samples[len(section.samples) - len(lengths) :]
+        self._note_pieces(r.piece[own], r.backward[own], lengths)
         self._add_segments(section, along, path, parent, base, piece)
         grown = self.segments_n > before
         self.last_segment[section.samples] = self.segments_n - 1 if grown else parent
@@ -224,6 +226,7 @@ class _Builder:
             self.r.name,
             *(c.astype(t) for c, t in zip(columns, types, strict=True)),
             piece_number=np.concatenate(self.piece_number),
+            piece_backward=np.concatenate(self.piece_backward),
             piece_bounds_um=np.concatenate([[0.0], np.cumsum(lengths)]),
         )
 

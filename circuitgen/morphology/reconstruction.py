@@ -9,6 +9,7 @@ Rules, each counted in the findings when it is used:
   their distance from the middle) is a sphere of the mean distance; anything else is
   taken as the capsules given. Without a soma one is made at the root of the largest
   tree, with the root's radius but at least 3 um.
+- A tree that the file roots elsewhere is rooted at its soma.
 - A root that is not soma is joined to the soma when it lies within 10 um of the soma's
   surface. Other loose pieces are kept when their root lies within 50 um of the joined
   cable, path length running on across the gap; farther ones are dropped.
@@ -17,7 +18,7 @@ Rules, each counted in the findings when it is used:
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 from pathlib import Path
 
 import numpy as np
@@ -62,11 +63,13 @@ class Reconstruction:
     """Neurites of one file, parents before children, and the soma.
 
     n samples. `parent` is an index, -1 where the sample leaves the soma from
-    `stem_um`; `bridged` marks samples whose gap to the parent is no cable.
+    `stem_um`; `bridged` marks samples whose gap to the parent is no cable. `piece` and
+    `backward` lead from the piece before a sample to the file, as in `Samples`.
     """
 
     name: str
-    number: np.ndarray
+    piece: np.ndarray
+    backward: np.ndarray
     kind: np.ndarray
     position_um: np.ndarray
     radius_um: np.ndarray
@@ -93,26 +96,38 @@ class _Intake:
             line = int(self.samples.line[where].min())
             self.findings.append(Finding(severity, text, int(where.sum()), line))
 
-    def keep(self, mask: np.ndarray) -> None:
-        """Keep the samples in the mask; children of the others become roots."""
-        rank = np.full(mask.size + 1, -1)
-        rank[:-1][mask] = np.arange(mask.sum())
+    def take(self, rows: np.ndarray) -> None:
+        """Keep the samples in `rows`, in that order; orphans become roots."""
+        s, rank = self.samples, np.full(self.samples.kind.size + 1, -1)
+        rank[rows] = np.arange(rows.size)
+        arrays = {
+            field.name: getattr(s, field.name)[rows]
+            for field in fields(s)
+            if field.name not in ("parent", "odd_roots")
+        }
+        self.samples = replace(s, parent=rank[s.parent[rows]], **arrays)
+
+    def root_at_soma(self) -> None:
         s = self.samples
-        self.samples = Samples(
-            s.number[mask],
-            s.kind[mask],
-            s.position_um[mask],
-            s.radius_um[mask],
-            rank[s.parent[mask]],
-            s.line[mask],
-            s.odd_roots,
-        )
+        somata = np.flatnonzero(s.kind == Kind.SOMA)
+        if not somata.size or s.parent[somata[0]] < 0:
+            return
+        self.find("repair", "tree rooted at its soma, not where the file has its root")
+        parent, piece, backward = s.parent.copy(), s.piece.copy(), s.backward.copy()
+        node, before = int(somata[0]), -1
+        while node >= 0:
+            above = int(s.parent[node])
+            parent[node] = before
+            if before >= 0:
+                piece[node], backward[node] = s.number[before], True
+            node, before = above, node
+        self.samples = replace(s, parent=parent, piece=piece, backward=backward)
+        self.take(order_from_roots(parent))
 
     def settle_kinds(self) -> None:
         glia = self.samples.kind == _GLIA
         self.find("repair", "samples of glia left out", glia)
-        if glia.any():
-            self.keep(~glia)
+        self.take(np.flatnonzero(~glia))
         kind = self.samples.kind.copy()
         unknown = ~np.isin(kind, [Kind.SOMA, *_NEURITES])
         self.find("repair", "samples of unknown type take their ancestor's", unknown)
@@ -270,6 +285,7 @@ def read_reconstruction(path: Path) -> Reconstruction:
     file_cable_um = float(_edge_lengths(intake.samples).sum())
     intake.note_oddities()
     intake.settle_kinds()
+    intake.root_at_soma()
     intake.mend_radii()
     soma = _soma_of(intake)
     everything = intake.samples
@@ -278,7 +294,7 @@ def read_reconstruction(path: Path) -> Reconstruction:
     leaves_soma &= everything.kind[everything.parent] == Kind.SOMA
     stem[leaves_soma] = everything.position_um[everything.parent[leaves_soma]]
     neurite = everything.kind != Kind.SOMA
-    intake.keep(neurite)
+    intake.take(np.flatnonzero(neurite))
     intake.warn(set(intake.samples.kind.tolist()))
     parent, bridged, dropped = _join_loose_if_any(intake, soma, leaves_soma[neurite])
     stem = np.where(np.isnan(stem[neurite]), soma.center_um, stem[neurite])
@@ -297,19 +313,19 @@ def _join_loose_if_any(intake: _Intake, soma: Soma, leaves_soma: np.ndarray):
 
 def _finish(path, intake, parent, stem, bridged, dropped, soma, file_cable_um):
     intake.samples = replace(intake.samples, parent=parent)
-    intake.keep(~dropped)
+    order = order_from_roots(parent)
+    order = order[~dropped[order]]
+    intake.take(order)
     s = intake.samples
-    order = order_from_roots(s.parent)
-    rank = np.full(order.size + 1, -1)
-    rank[order] = np.arange(order.size)
     arrays = {
-        "number": s.number[order],
-        "kind": s.kind[order].astype(np.int8),
-        "position_um": s.position_um[order],
-        "radius_um": s.radius_um[order],
-        "parent": rank[s.parent[order]],
-        "stem_um": stem[~dropped][order],
-        "bridged": bridged[~dropped][order],
+        "piece": s.piece,
+        "backward": s.backward,
+        "kind": s.kind.astype(np.int8),
+        "position_um": s.position_um,
+        "radius_um": s.radius_um,
+        "parent": s.parent,
+        "stem_um": stem[order],
+        "bridged": bridged[order],
     }
     for array in arrays.values():
         array.setflags(write=False)

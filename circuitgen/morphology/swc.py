@@ -39,6 +39,8 @@ class Samples:
 
     n samples: `number` (n,) as in the file, `kind` (n,), `position_um` (n, 3),
     `radius_um` (n,), `parent` (n,) index of the parent or -1, `line` (n,).
+    `piece` (n,): number of the sample that ends, in the file, the piece between this
+    sample and its parent; `backward` (n,): whether the file runs it the other way.
     `odd_roots`: how many roots were marked by something else than -1.
     """
 
@@ -48,6 +50,8 @@ class Samples:
     radius_um: np.ndarray
     parent: np.ndarray
     line: np.ndarray
+    piece: np.ndarray
+    backward: np.ndarray
     odd_roots: int
 
 
@@ -188,6 +192,8 @@ def read_samples(path: Path) -> Samples:
         radius_um=table[order, 5],
         parent=rank[parent[order]],
         line=line[order],
+        piece=number[order],
+        backward=np.zeros(order.size, bool),
         odd_roots=odd_roots,
     )
 

@@ -75,6 +75,7 @@ def make_arbor(rng, name: str) -> Arbor:
         first_piece=np.arange(n),
         last_piece=np.arange(n),
         piece_number=np.arange(1, n + 1),
+        piece_backward=np.zeros(len(kind), bool),
         piece_bounds_um=bounds,
     )
 
