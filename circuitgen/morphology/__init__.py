@@ -2,6 +2,7 @@
 
 from circuitgen.morphology.arbor import Arbor, Kind
 from circuitgen.morphology.build import build_arbor
+from circuitgen.morphology.growth import grow_files
 from circuitgen.morphology.reconstruction import (
     Finding,
     Reconstruction,
@@ -15,6 +16,7 @@ __all__ = [
     "Kind",
     "Reconstruction",
     "build_arbor",
+    "grow_files",
     "read_reconstruction",
     "write_swc",
 ]

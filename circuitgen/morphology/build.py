@@ -83,11 +83,10 @@ def _section(r: Reconstruction, points: np.ndarray, run: list[int]) -> _Section:
 
 def _sections(r: Reconstruction, points: np.ndarray) -> Iterator[tuple[_Section, int]]:
     """Yield sections from the soma outward with the sample that each continues."""
-    children = _children(r.parent)
+    children, where = _children(r.parent), np.round(points, 6)
 
     def ordered(starts: list[int]) -> list[list[int]]:
         runs = [_run(start, r.kind, r.bridged, children) for start in starts]
-        where = np.round(points, 6)
         return sorted(runs, key=lambda run: (int(r.kind[run[0]]), *where[run[-1]]))
 
     pending = [(run, -1) for run in reversed(ordered(children.get(-1, [])))]
