@@ -7,6 +7,7 @@ corners count; branches are ordered by where they end.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 
@@ -120,9 +121,23 @@ def _cut(low: float, high: float, length: float, spacing: float, stop: float):
         bounds.insert(1, (stop - low) / (high - low))
     cuts = [0.0]
     for a, b in zip(bounds[:-1], bounds[1:], strict=True):
-        parts = max(int(np.ceil((b - a) * length / spacing - 1e-9)), 1)
+        parts = max(math.ceil((b - a) * length / spacing - 1e-9), 1)
         cuts += [a + (b - a) * (k + 1) / parts for k in range(parts)]
-    return np.array(cuts)
+    return cuts
+
+
+def _cut_all(path, length, spacing: float, stop: float):
+    """Cut every straight piece; return its index and both fractions by segment."""
+    cuts = [
+        _cut(low, high, span, spacing, stop) if span > 0 else [0.0]
+        for low, high, span in zip(
+            path[:-1].tolist(), path[1:].tolist(), length.tolist(), strict=True
+        )
+    ]
+    which = np.repeat(np.arange(len(cuts)), [len(cut) - 1 for cut in cuts])
+    begin = np.array([f for cut in cuts for f in cut[:-1]])
+    end = np.array([f for cut in cuts for f in cut[1:]])
+    return which, begin, end
 
 
 class _Builder:
@@ -185,33 +200,44 @@ class _Builder:
 
     def _add_segments(self, section, along, path, parent, base, piece) -> None:
         points, radii, inner = _begin_after(section, along)
-        kept = corners(points, radii) if len(points) > 1 else np.zeros(0, int)
+        if len(points) < 2:
+            return
+        kept = corners(points, radii)
+        points, radii, inner = points[kept], radii[kept], inner[kept]
+        chord, widen = np.diff(points, axis=0), np.diff(radii)
         kind = self.r.kind[section.samples[0]]
         stop = self.ais_um if kind == Kind.AXON else -1.0
-        for low, high in zip(kept[:-1], kept[1:], strict=True):
-            length = float(np.linalg.norm(points[high] - points[low]))
-            if length <= 0.0:
-                continue
-            from_soma = path - section.skip_um
-            a, b = from_soma + inner[low], from_soma + inner[high]
-            cuts = _cut(a, b, length, self.spacing_um, stop)
-            n = len(cuts) - 1
-            ends = points[low] + cuts[:, None] * (points[high] - points[low])
-            radius = radii[low] + cuts * (radii[high] - radii[low])
-            cable = inner[low] + cuts * (inner[high] - inner[low])
-            paths = a + cuts * (b - a)
-            # Cable coordinates lead to pieces by the section's own boundaries.
-            begin = np.searchsorted(along, cable[:-1], side="right") - 1
-            end = np.searchsorted(along, cable[1:], side="left") - 1
-            begin = np.clip(begin, 0, len(along) - 2)
-            end = np.clip(end, begin, len(along) - 2)
-            before = np.concatenate([[parent], self.segments_n + np.arange(n - 1)])
-            self._add(
-                ends[:-1], ends[1:], radius[:-1], radius[1:], np.full(n, kind), before,
-                paths[1:] <= stop + 1e-9, paths[:-1], paths[1:], base + cable[:-1],
-                base + cable[1:], piece + begin, piece + end,
-            )  # fmt: skip
-            parent = self.segments_n - 1
+        from_soma = path - section.skip_um + inner
+        length = np.sqrt((chord**2).sum(axis=1))
+        which, begin, end = _cut_all(from_soma, length, self.spacing_um, stop)
+        n = which.size
+        if n == 0:
+            return
+        low, span = inner[which], np.diff(inner)[which]
+        cable_begin, cable_end = low + begin * span, low + end * span
+        # Cable coordinates lead to pieces by the section's own boundaries.
+        last = len(along) - 2
+        first_piece = np.searchsorted(along, cable_begin, side="right") - 1
+        first_piece = np.minimum(np.maximum(first_piece, 0), last)
+        last_piece = np.searchsorted(along, cable_end, side="left") - 1
+        last_piece = np.minimum(np.maximum(last_piece, first_piece), last)
+        path_begin = path - section.skip_um + cable_begin
+        path_end = path - section.skip_um + cable_end
+        self._add(
+            points[which] + begin[:, None] * chord[which],
+            points[which] + end[:, None] * chord[which],
+            radii[which] + begin * widen[which],
+            radii[which] + end * widen[which],
+            np.full(n, kind),
+            np.concatenate([[parent], self.segments_n + np.arange(n - 1)]),
+            path_end <= stop + 1e-9,
+            path_begin,
+            path_end,
+            base + cable_begin,
+            base + cable_end,
+            piece + first_piece,
+            piece + last_piece,
+        )
 
     def arbor(self) -> Arbor:
         """Join everything."""
