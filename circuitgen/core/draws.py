@@ -67,7 +67,7 @@ def uniforms(seed, stage, first, second=0, third=0, index=0) -> np.ndarray:
     stage : str
         Name of the stage that draws; stages never share numbers.
     first, second, third : array_like of int
-        Ids of what is drawn, broadcast against each other; not negative.
+        Ids of what is drawn, broadcast against each other and made flat; not negative.
     index : array_like of int
         Which block of four, for things that need more than four numbers.
 
@@ -78,9 +78,7 @@ def uniforms(seed, stage, first, second=0, third=0, index=0) -> np.ndarray:
         stage_key(stage)], counter=[index, first, second, third])``.
     """
     words = np.broadcast_arrays(index, first, second, third)
-    words = [
-        np.ascontiguousarray(np.atleast_1d(word), dtype=np.uint64) for word in words
-    ]
+    words = [np.ascontiguousarray(word, dtype=np.uint64).reshape(-1) for word in words]
     out = np.zeros((words[0].size, _DRAWS))
     _fill_uniforms(np.uint64(seed), np.uint64(stage_key(stage)), *words, out)
     return out

@@ -1,0 +1,167 @@
+"""The circuit under construction: spec, arbors, cells, and what follows from them."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from circuitgen.appositions import TARGET_BITS, Scene, make_scene
+from circuitgen.column import Cells, Placement, make_volume, place_cells
+from circuitgen.core.errors import InputError
+from circuitgen.core.progress import Progress
+from circuitgen.core.run_tables import CELLS
+from circuitgen.core.tables import names_column
+from circuitgen.morphology import Arbor, build_arbor, read_reconstruction
+from circuitgen.spec import Spec
+
+
+@dataclass(frozen=True)
+class Circuit:
+    """Cells in place with their arbors; `arbors` in the order of `cells.arbor_index`."""
+
+    spec: Spec
+    arbors: tuple[Arbor, ...]
+    placement: Placement
+    scene: Scene
+    warnings: tuple[str, ...]
+
+    @property
+    def cells(self) -> Cells:
+        """The placed cells."""
+        return self.placement.cells
+
+    @property
+    def wrap_um(self) -> tuple[float, float]:
+        """Periods in x and y, 0 where the edge is open."""
+        return self.scene.wrap_um
+
+    def pathway(self, pre: np.ndarray, post: np.ndarray) -> np.ndarray:
+        """Code of each pair's pathway: presynaptic type x number of types + post."""
+        types = self.cells.type_index
+        return types[pre].astype(np.int64) * len(self.spec.cell_types) + types[post]
+
+
+def read_arbors(spec: Spec) -> tuple[list[list[Arbor]], list[str]]:
+    """Read all reconstructions of a spec; return arbors by type, and warnings.
+
+    Raises one InputError with the problems of all files.
+    """
+    files_n = sum(len(cell_type.morphologies) for cell_type in spec.cell_types)
+    arbors, warnings, problems = [], [], []
+    with Progress("reading reconstructions", files_n) as progress:
+        for cell_type in spec.cell_types:
+            own = []
+            for path in cell_type.morphologies:
+                try:
+                    reconstruction = read_reconstruction(path)
+                except InputError as error:
+                    problems += error.problems
+                    continue
+                finally:
+                    progress.advance()
+                warnings += [
+                    f"{path.name}: {finding.text}"
+                    for finding in reconstruction.findings
+                    if finding.severity == "warning"
+                ]
+                own.append(
+                    build_arbor(
+                        reconstruction,
+                        upright=cell_type.upright,
+                        min_spacing_um=spec.appositions.min_spacing_um,
+                        ais_um=cell_type.ais_um,
+                    )
+                )
+            arbors.append(own)
+    if problems:
+        raise InputError(problems)
+    return arbors, warnings
+
+
+def _target_masks(spec: Spec) -> np.ndarray:
+    """Bits of the targets that each type's axon may contact."""
+    return np.array(
+        [sum(TARGET_BITS[t] for t in cell_type.targets) for cell_type in spec.cell_types]
+    )
+
+
+def _outside_warnings(spec: Spec, placement: Placement) -> list[str]:
+    return [
+        f"{cell_type.name}: {share:.0%} of the cable lies outside the cortex"
+        for cell_type, share in zip(
+            spec.cell_types, placement.outside_share, strict=True
+        )
+        if share > 0.05
+    ]
+
+
+def assemble(spec: Spec) -> Circuit:
+    """Read the reconstructions, place the cells, and make them ready for the search."""
+    by_type, warnings = read_arbors(spec)
+    placement = place_cells(spec, by_type)
+    arbors = [arbor for own in by_type for arbor in own]
+    cells = placement.cells
+    scene = make_scene(
+        arbors,
+        arbor_index=cells.arbor_index,
+        position_um=cells.position_um,
+        azimuth_deg=cells.azimuth_deg,
+        target_mask=_target_masks(spec)[cells.type_index],
+        max_gap_um=spec.appositions.max_gap_um,
+        min_spacing_um=spec.appositions.min_spacing_um,
+        autapses=spec.appositions.autapses,
+        wrap_um=make_volume(spec).wrap_um,
+    )
+    warnings += [*placement.warnings, *_outside_warnings(spec, placement)]
+    return Circuit(spec, tuple(arbors), placement, scene, tuple(warnings))
+
+
+def cells_table(circuit: Circuit) -> dict[str, object]:
+    """Return the columns of the table of cells."""
+    cells, spec = circuit.cells, circuit.spec
+    x, y, z = cells.position_um.T
+    signs = ("excitatory", "inhibitory")
+    sign_of_type = np.array([signs.index(t.sign) for t in spec.cell_types])
+    return {
+        "cell_id": np.arange(cells.cells_n),
+        "cell_type": names_column(cells.type_index, spec.type_names),
+        "layer": names_column(cells.layer_index, [layer.name for layer in spec.layers]),
+        "sign": names_column(sign_of_type[cells.type_index], signs),
+        "morphology": names_column(
+            cells.arbor_index, [arbor.name for arbor in circuit.arbors]
+        ),
+        "x_um": x,
+        "y_um": y,
+        "z_um": z,
+        "depth_um": spec.thickness_um - z,
+        "azimuth_deg": cells.azimuth_deg,
+    }
+
+
+def write_cells(circuit: Circuit, path) -> None:
+    """Write the table of cells."""
+    CELLS.write_parquet(path, cells_table(circuit))
+
+
+def soma_offsets(circuit: Circuit, pre, post) -> np.ndarray:
+    """Vector from the soma of pre to that of post (n, 3), the shortest under wrap."""
+    away = circuit.cells.position_um[post] - circuit.cells.position_um[pre]
+    for axis, period in enumerate(circuit.wrap_um):
+        if period > 0:
+            away[:, axis] -= period * np.round(away[:, axis] / period)
+    return away
+
+
+def block_bounds(circuit: Circuit, most_targets: int) -> Sequence[tuple[int, int]]:
+    """Cut the cells into blocks of consecutive ids by their number of targets.
+
+    The cut depends on the circuit alone, so that part files are the same everywhere.
+    """
+    counts = sum(np.diff(layer.first) for layer in circuit.scene.targets)
+    running = np.cumsum(counts[circuit.cells.arbor_index])
+    block = (running - 1) // most_targets
+    edges = np.flatnonzero(np.diff(block)) + 1
+    bounds = [0, *edges.tolist(), circuit.cells.cells_n]
+    return list(zip(bounds[:-1], bounds[1:], strict=True))
