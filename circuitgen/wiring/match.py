@@ -19,6 +19,9 @@ from circuitgen.wiring.law import NEVER, Law, count_moments, log_ways, moments
 # to machine precision.
 _LIMIT = 45.0
 _TINY = 1e-12
+# Log odds closer than this are equal: the rounding of some hundred terms.
+_CLOSE = 1e-13
+_PLAIN = Law(0.0, 0.0)
 
 
 @dataclass(frozen=True)
@@ -74,11 +77,33 @@ def spread_range(
     return float(np.sqrt(max(low, 0.0))), float(np.sqrt(max(high, 0.0)))
 
 
-def solve_t0(histogram: np.ndarray, probability: float, t1: float, t2: float) -> float:
-    """Return the t0 that gives a feasible probability, other exponents given.
+def _rising_root(value_and_slope, low: float, high: float, start: float) -> float:
+    """Return the root of a rising function of log odds between two bounds.
 
-    Newton steps on the log odds within a bracket that halves when a step leaves it.
+    Newton steps within a bracket that halves when a step leaves it, as it does where
+    the slope is lost to rounding.
     """
+    x = start if low < start < high else 0.5 * (low + high)
+    for _ in range(200):
+        value, slope = value_and_slope(x)
+        low, high = (x, high) if value < 0 else (low, x)
+        with np.errstate(all="ignore"):
+            following = float(x - np.float64(value) / slope)
+        if not low < following < high:
+            following = 0.5 * (low + high)
+        if abs(value) <= _CLOSE or abs(following - x) <= 1e-14 * abs(x):
+            break
+        x = following
+    return x
+
+
+def _log_odds(share: float, rest: float) -> float:
+    with np.errstate(divide="ignore"):
+        return np.log(max(share, 0.0)) - np.log(max(rest, 0.0))
+
+
+def solve_t0(histogram: np.ndarray, probability: float, t1: float, t2: float) -> float:
+    """Return the t0 that gives a feasible probability, other exponents given."""
     if probability <= 0.0:
         return NEVER
     a = np.flatnonzero(histogram)
@@ -87,51 +112,58 @@ def solve_t0(histogram: np.ndarray, probability: float, t1: float, t2: float) ->
     most = weight.sum()
     if probability >= most * (1 - _TINY):
         return _LIMIT - float(ways.min())
-    odds = np.log(probability / (most - probability))
+    odds = _log_odds(probability, most - probability)
+
+    def excess(t0: float) -> tuple[float, float]:
+        joined, apart = expit(t0 + ways), expit(-t0 - ways)
+        p, rest = weight @ joined, weight @ apart
+        with np.errstate(all="ignore"):
+            slope = weight @ (joined * apart) * most / (p * rest)
+        return _log_odds(p, rest) - odds, slope
+
     low, high = odds - float(ways.max()) - 1e-9, odds - float(ways.min()) + 1e-9
-    t0 = 0.5 * (low + high)
-    for _ in range(100):
-        each = expit(t0 + ways)
-        p = weight @ each
-        low, high = (t0, high) if p < probability else (low, t0)
-        slope = weight @ (each * (1 - each)) * most / (p * (most - p))
-        step = (np.log(p / (most - p)) - odds) / slope
-        following = t0 - step
-        if not low < following < high:
-            following = 0.5 * (low + high)
-        if abs(following - t0) <= 1e-14 * max(1.0, abs(t0)):
-            break
-        t0 = following
-    return float(t0)
+    return _rising_root(excess, low, high, 0.5 * (low + high))
 
 
 def _profile(histogram, probability: float, t1: float, t2: float) -> Law:
     return Law(solve_t0(histogram, probability, t1, t2), t1, t2)
 
 
-def _match_mean(histogram, probability: float, mean: float, t2: float = 0.0) -> Law:
-    """Meet a probability and a feasible mean; the mean rises with t1."""
+def _match_mean(histogram, probability, mean, near: Law = _PLAIN) -> Law:
+    """Meet a probability and a feasible mean with the t2 of a law that lies near."""
+    t2 = near.t2
+    top = largest_mean(histogram, probability)
+    odds = _log_odds(mean - 1, top - mean)
 
-    def excess(t1: float) -> float:
-        return moments(histogram, _profile(histogram, probability, t1, t2)).mean - mean
+    def excess(t1: float) -> tuple[float, float]:
+        law = _profile(histogram, probability, t1, t2)
+        m = moments(histogram, law).mean
+        dp, dm = gradient(histogram, law)
+        with np.errstate(all="ignore"):
+            # t0 follows t1 so that the probability stays where it is.
+            slope = dm[1] - dm[0] * dp[1] / dp[0]
+            slope *= (top - 1) / ((m - 1) * (top - m))
+        return _log_odds(m - 1, top - m) - odds, slope
 
     largest_a = int(np.flatnonzero(histogram).max())
     # With t2 the exponent of one synapse more is t1 + t2 (2 s + 1).
-    low = -_LIMIT - abs(t2) * (2 * largest_a + 1)
-    high = -low
-    if excess(low) >= 0:
-        return _profile(histogram, probability, low, t2)
-    if excess(high) <= 0:
-        return _profile(histogram, probability, high, t2)
-    t1 = brentq(excess, low, high, xtol=1e-13, rtol=1e-14, maxiter=300)
+    high = _LIMIT + abs(t2) * (2 * largest_a + 1)
+    for limit, reached in ((-high, mean <= 1.0), (high, mean >= top)):
+        if reached:
+            return _profile(histogram, probability, limit, t2)
+    t1 = _rising_root(excess, -high, high, near.t1)
     return _profile(histogram, probability, t1, t2)
 
 
-def _match_spread(histogram, probability, mean, sd) -> Law:
+def _match_spread(histogram, probability, mean, sd, without: Law) -> Law:
     """Meet a probability, a mean and a feasible sd; the sd rises with t2."""
+    law = without
 
     def excess(t2: float) -> float:
-        law = _match_mean(histogram, probability, mean, t2)
+        nonlocal law
+        # About the mean, t1 + 2 t2 s is what decides one synapse more or less.
+        near = Law(law.t0, law.t1 - 2 * (t2 - law.t2) * mean, t2)
+        law = _match_mean(histogram, probability, mean, near)
         return moments(histogram, law).sd - sd
 
     low, high = -0.25, 0.25
@@ -139,12 +171,12 @@ def _match_spread(histogram, probability, mean, sd) -> Law:
         low *= 2
     while excess(high) < 0 and high < _LIMIT:
         high *= 2
-    if excess(low) >= 0:
-        return _match_mean(histogram, probability, mean, low)
-    if excess(high) <= 0:
-        return _match_mean(histogram, probability, mean, high)
-    t2 = brentq(excess, low, high, xtol=1e-12, rtol=1e-12)
-    return _match_mean(histogram, probability, mean, t2)
+    for limit, reached in ((low, excess(low) >= 0), (high, excess(high) <= 0)):
+        if reached:
+            excess(limit)
+            return law
+    excess(brentq(excess, low, high, xtol=1e-12, rtol=1e-12))
+    return law
 
 
 def match(
@@ -205,7 +237,7 @@ def _with_spread(histogram, probability, mean, sd, without: Law) -> Match:
     if not low - 1e-9 <= sd <= high + 1e-9:
         note = f"a spread of {sd:.4g} synapses is out of reach: {low:.4g} to {high:.4g}"
         return Match(without, False, note)
-    law = _match_spread(histogram, probability, mean, sd)
+    law = _match_spread(histogram, probability, mean, sd, without)
     two_humped = sd > moments(histogram, without).sd * (1 + 1e-6)
     note = "spread above that of the plain law: sizes pile up at both ends"
     return Match(law, True, note if two_humped else "")
