@@ -14,6 +14,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 from scipy.optimize import minimize
+from scipy.special import expit, logit
 
 from circuitgen.spec import Recording
 from circuitgen.wiring.intervals import wilson_interval
@@ -25,6 +26,7 @@ Pathway = tuple[int, int]
 # weighs as a very large sample.
 _EXACT_N = 10_000_000
 _DEFAULT_SD = 1.0
+_LEAST_Q = 1e-15
 
 
 @dataclass(frozen=True)
@@ -60,6 +62,8 @@ class _Unit:
     pathways: list[Pathway]
     windows: list[Window]
     law: Law | None = None
+    # The exponent t1 of the law without t2, which like pathways may share.
+    plain_t1: float = 0.0
     interval: tuple[float, float] = (np.nan, np.nan)
     feasible: bool = True
     notes: list[str] = field(default_factory=list)
@@ -135,10 +139,11 @@ def _fit_one_row(unit: _Unit, t1_given: float) -> None:
     window = unit.windows[0]
     recording, histogram = window.recording, unit.histogram(window)
     probability, _ = _target(recording)
-    found = match(
-        histogram, probability, recording.synapses_mean, recording.synapses_sd, t1_given
-    )
+    mean, sd = recording.synapses_mean, recording.synapses_sd
+    found = match(histogram, probability, mean, sd, t1_given)
     unit.law, unit.feasible = found.law, found.feasible
+    plain = found if sd is None else match(histogram, probability, mean)
+    unit.plain_t1 = plain.law.t1
     unit.notes += [found.note] if found.note else []
     if recording.connected_n in (0, recording.tested_n) and recording.tested_n:
         unit.notes.append("fitted at (k + 1/2) / (n + 1)")
@@ -169,18 +174,25 @@ def _fit_many_rows(unit: _Unit, t1_given: float) -> None:
     size = 2 if has_mean else 1
     best = minimize(loss, start[:size], method="Nelder-Mead", options=options).x
     unit.law = Law(float(best[0]), float(best[1]) if has_mean else t1_given)
+    unit.plain_t1 = unit.law.t1
     unit.notes.append(f"fitted together with {len(rows) - 1} other rows")
 
 
 def _pooled_t1(units: Sequence[_Unit], classes, wanted) -> float | None:
-    """Mean t1 of the units of a class (of all when None) whose rows tell of synapses."""
+    """Pool t1 over the fitted units of a class, over all when `wanted` is None.
+
+    The share of sites used, q = 1 / (1 + exp(-t1)), is averaged: it stays between 0
+    and 1 where a mean of exactly one synapse puts t1 at minus infinity.
+    """
     values = [
-        unit.law.t1
+        unit.plain_t1
         for unit in units
         if unit.law is not None
         and (wanted is None or classes(unit.pathways[0]) == wanted)
     ]
-    return float(np.mean(values)) if values else None
+    if not values:
+        return None
+    return float(logit(np.clip(np.mean(expit(values)), _LEAST_Q, 1 - _LEAST_Q)))
 
 
 def _interval(unit: _Unit) -> tuple[float, float]:
@@ -190,8 +202,7 @@ def _interval(unit: _Unit) -> tuple[float, float]:
         return np.nan, np.nan
     k = sum(w.recording.connected_n for w in counted)
     n = sum(w.recording.tested_n for w in counted)
-    parts = [unit.histogram(w) * (w.recording.tested_n / n) for w in counted]
-    parts = [part / part.sum() for part in parts]
+    parts = [unit.histogram(w) / unit.histogram(w).sum() for w in counted]
     mixed = np.zeros(max(part.size for part in parts))
     for part, window in zip(parts, counted, strict=True):
         mixed[: part.size] += part * window.recording.tested_n
@@ -254,7 +265,11 @@ def fit_pathways(
         t1 = _pooled_t1(told, classes, classes(unit.pathways[0]))
         t1 = _pooled_t1(told, classes, None) if t1 is None else t1
         if unit not in told:
-            unit.notes.append("synapse number taken from like pathways")
+            unit.notes.append(
+                "synapse number taken from like pathways"
+                if told
+                else "no row tells of synapses: every subset of sites weighs the same"
+            )
         fit = _fit_one_row if len(unit.windows) == 1 else _fit_many_rows
         fit(unit, t1 or 0.0)
         unit.interval = _interval(unit)
@@ -287,6 +302,7 @@ def _row_fit(window: Window, units: Sequence[_Unit], laws) -> RowFit:
             if found.probability > 0:
                 first += n * found.probability * found.mean
                 second += n * found.probability * (found.sd**2 + found.mean**2)
+    sampled = {p for p, histogram in window.histograms.items() if histogram.sum()}
     mine = [u for u in units if window in u.windows]
     notes = list(dict.fromkeys(note for unit in mine for note in unit.notes))
     if not total:
@@ -297,7 +313,7 @@ def _row_fit(window: Window, units: Sequence[_Unit], laws) -> RowFit:
         notes = ["kept out of the fit"]
     elif window.recording.measured_probability is None:
         notes.append("no probability measured: not used in the fit")
-    elif len({p for u in mine for p in u.pathways}) < len(window.pathways):
+    elif sampled - {p for u in mine for p in u.pathways}:
         notes.append("members with rows of their own keep their own law")
     mean = first / p if p else np.nan
     sd = float(np.sqrt(max(second / p - mean**2, 0.0))) if p else np.nan

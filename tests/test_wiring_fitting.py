@@ -1,0 +1,327 @@
+"""Fitting pathways to recordings, against an independent likelihood."""
+
+from __future__ import annotations
+
+import itertools
+
+import numpy as np
+import pytest
+from scipy.optimize import minimize
+from statsmodels.stats.proportion import proportion_confint
+
+from circuitgen.spec import Recording
+from circuitgen.wiring import Law, Window, fit_pathways, moments
+
+NEAR = np.array([20, 30, 25, 15, 8, 2])
+FAR = np.array([80, 12, 5, 3, 0, 0])
+SIGNS = (True, True, False)
+
+
+def _window(row, histograms, **measured):
+    recording = Recording(pre_type="a", post_type="b", row=row, **measured)
+    return Window(recording, {p: np.asarray(h) for p, h in histograms.items()})
+
+
+def _one(row, histogram, pathway=(0, 0), **measured):
+    return _window(row, {pathway: histogram}, **measured)
+
+
+def test_one_row_is_met_exactly():
+    window = _one(
+        1, NEAR, tested_n=60, connected_n=9, synapses_mean=2.1, synapses_sd=0.9
+    )
+    fit = fit_pathways(SIGNS, [window])
+    got = moments(NEAR, fit.laws[0, 0])
+    assert got.probability == pytest.approx(0.15, abs=1e-10)
+    assert got.mean == pytest.approx(2.1, abs=1e-8)
+    assert got.sd == pytest.approx(0.9, abs=1e-8)
+    assert fit.recorded[0, 0]
+    [row] = fit.rows
+    assert row.fitted.probability == pytest.approx(0.15, abs=1e-10)
+    assert row.fitted.sd == pytest.approx(0.9, abs=1e-8)
+    assert row.feasible
+    assert row.note == ""
+
+
+def test_the_interval_of_a_recorded_pathway_is_wilsons():
+    fit = fit_pathways(SIGNS, [_one(1, NEAR, tested_n=60, connected_n=9)])
+    low, high = proportion_confint(9, 60, method="wilson")
+    for bound, t0 in ((low, fit.t0_low[0, 0]), (high, fit.t0_high[0, 0])):
+        law = Law(t0, fit.laws[0, 0].t1, fit.laws[0, 0].t2)
+        assert moments(NEAR, law).probability == pytest.approx(bound, abs=1e-10)
+
+
+def _predicted(histogram, t0, t1):
+    """Probability and mean from the truncated binomial, in plain numbers."""
+    share = histogram / histogram.sum()
+    q, probability, synapses = 1 / (1 + np.exp(-t1)), 0.0, 0.0
+    for a in range(1, share.size):
+        ways = np.exp(t0) * ((1 + np.exp(t1)) ** a - 1)
+        joined = share[a] * ways / (1 + ways)
+        probability += joined
+        synapses += joined * a * q / (1 - (1 - q) ** a)
+    return probability, synapses / probability
+
+
+def _minus_log_likelihood(x, rows):
+    """Binomial counts and normal means, written anew."""
+    total = 0.0
+    for histogram, k, n, mean, sd, pairs in rows:
+        p, m = _predicted(histogram, *x)
+        total -= k * np.log(p) + (n - k) * np.log(1 - p)
+        if mean is not None:
+            total += (m - mean) ** 2 / (2 * sd**2 / pairs)
+    return total
+
+
+ROWS = [
+    (NEAR, 30, 100, 2.0, 0.8, 12),
+    (FAR, 5, 80, None, None, None),
+    (FAR + NEAR, 10, 50, 1.5, 1.0, 5),
+]
+
+
+def _row_windows(rows):
+    out = []
+    for index, (histogram, k, n, mean, sd, pairs) in enumerate(rows, start=1):
+        measured = {"tested_n": n, "connected_n": k}
+        if mean is not None:
+            measured |= {
+                "synapses_mean": mean,
+                "synapses_sd": sd,
+                "synapses_pairs_n": pairs,
+            }
+        out.append(_one(index, histogram, **measured))
+    return out
+
+
+def test_several_windows_of_a_pathway_are_fitted_by_maximum_likelihood():
+    fit = fit_pathways(SIGNS, _row_windows(ROWS))
+    best = min(
+        (
+            minimize(_minus_log_likelihood, start, args=(ROWS,), method="BFGS")
+            for start in itertools.product((-3.0, 0.0), (-2.0, 1.0))
+        ),
+        key=lambda found: found.fun,
+    )
+    law = fit.laws[0, 0]
+    # BFGS stops at a slope of 1e-5; the curvature here is of order 1 to 10.
+    assert (law.t0, law.t1) == pytest.approx(tuple(best.x), abs=1e-4)
+    found = _minus_log_likelihood((law.t0, law.t1), ROWS)
+    assert found <= best.fun + 1e-8
+    for row in fit.rows:
+        assert "fitted together with 2 other rows" in row.note
+
+
+def test_the_order_of_rows_does_not_matter():
+    windows = [
+        *_row_windows(ROWS),
+        _one(4, NEAR, (1, 2), tested_n=40, connected_n=22),
+        _window(5, {(2, 0): NEAR, (2, 1): FAR}, tested_n=40, connected_n=11),
+        _one(6, FAR, (0, 1), probability=0.05, synapses_mean=1.2),
+    ]
+    first = fit_pathways(SIGNS, windows)
+    for order in ([5, 4, 3, 2, 1, 0], [2, 0, 4, 1, 5, 3]):
+        other = fit_pathways(SIGNS, [windows[index] for index in order])
+        for pathway, law in first.laws.items():
+            again = other.laws[pathway]
+            # The search stops within 1e-8 in each exponent, its start differs.
+            assert (again.t0, again.t1) == pytest.approx((law.t0, law.t1), abs=1e-6)
+        assert other.recorded == first.recorded
+        assert [row.window for row in other.rows] == [windows[i] for i in order]
+
+
+@pytest.mark.parametrize("rows_n", [1, 2])
+def test_a_huge_sample_equals_the_exact_match(rows_n):
+    """Counts generated by one law come back to it, alone or over two windows."""
+    truth = Law(-1.5, -0.6)
+    windows = []
+    for row, histogram in enumerate([NEAR, FAR][:rows_n], start=1):
+        got = moments(histogram, truth)
+        n = 10**9
+        measured = {
+            "tested_n": n,
+            "connected_n": round(n * got.probability),
+            "synapses_mean": got.mean,
+            "synapses_sd": got.sd if rows_n == 1 else None,
+            "synapses_pairs_n": n,
+        }
+        windows.append(_one(row, histogram, **measured))
+    law = fit_pathways(SIGNS, windows).laws[0, 0]
+    assert law.t2 == pytest.approx(0.0, abs=1e-6)
+    # Counts are rounded to 1e-9 of n; a few times that moves the exponents.
+    assert (law.t0, law.t1) == pytest.approx((truth.t0, truth.t1), abs=1e-5)
+
+
+def test_a_probability_without_counts_is_met_exactly_and_has_no_interval():
+    fit = fit_pathways(SIGNS, [_one(1, NEAR, probability=0.07)])
+    got = moments(NEAR, fit.laws[0, 0])
+    assert got.probability == pytest.approx(0.07, abs=1e-12)
+    assert np.isnan(fit.t0_low[0, 0])
+    assert np.isnan(fit.t0_high[0, 0])
+    never = fit_pathways(SIGNS, [_one(1, NEAR, probability=0.0)])
+    assert moments(NEAR, never.laws[0, 0]).probability == 0.0
+
+
+def test_a_probability_without_counts_outweighs_counts_in_another_window():
+    windows = [
+        _one(1, NEAR, probability=0.2),
+        _one(2, FAR, tested_n=50, connected_n=25),
+    ]
+    fit = fit_pathways(SIGNS, windows)
+    # 50 pairs against a sample of ten million: the odds differ by the order of 1e-5.
+    assert fit.rows[0].fitted.probability == pytest.approx(0.2, abs=1e-4)
+    assert fit.rows[1].fitted.probability < 0.2
+
+
+@pytest.mark.parametrize(("k", "stand_in"), [(0, 0.5 / 31), (30, 30.5 / 31)])
+def test_none_or_all_connected_are_information_but_no_certainty(k, stand_in):
+    """(k + 1/2) / (n + 1) is the mean under Jeffreys' prior, Beta(1/2, 1/2)."""
+    everyone_touches = np.array([0, 30, 25, 15, 8, 2])
+    fit = fit_pathways(SIGNS, [_one(1, everyone_touches, tested_n=30, connected_n=k)])
+    got = moments(everyone_touches, fit.laws[0, 0])
+    assert got.probability == pytest.approx(stand_in, abs=1e-10)
+    assert "(k + 1/2) / (n + 1)" in fit.rows[0].note
+    low, high = proportion_confint(k, 30, method="wilson")
+    for bound, t0 in ((low, fit.t0_low[0, 0]), (high, fit.t0_high[0, 0])):
+        law = Law(t0, fit.laws[0, 0].t1)
+        assert moments(everyone_touches, law).probability == pytest.approx(
+            bound, abs=1e-9
+        )
+
+
+def test_a_row_out_of_reach_is_reported_with_the_range():
+    fit = fit_pathways(SIGNS, [_one(1, FAR, tested_n=10, connected_n=9)])
+    [row] = fit.rows
+    assert not row.feasible
+    assert "at most 0.2" in row.note
+    assert row.fitted.probability == pytest.approx(0.2, abs=1e-9)
+
+
+def test_a_group_row_decides_the_members_without_rows_of_their_own():
+    windows = [
+        _window(1, {(0, 0): NEAR, (0, 1): FAR, (0, 2): NEAR}, probability=0.12),
+        _one(2, NEAR, (0, 2), tested_n=50, connected_n=20),
+    ]
+    fit = fit_pathways(SIGNS, windows)
+    assert fit.laws[0, 0] == fit.laws[0, 1]
+    together = moments(NEAR + FAR, fit.laws[0, 0]).probability
+    assert together == pytest.approx(0.12, abs=1e-10)
+    own = moments(NEAR, fit.laws[0, 2]).probability
+    assert own == pytest.approx(0.4, abs=1e-10)
+    # The group row's fitted value pools all three members with their own laws.
+    assert fit.rows[0].fitted.probability == pytest.approx(
+        (0.12 * 200 + 0.4 * 100) / 300, abs=1e-10
+    )
+    assert "members with rows of their own" in fit.rows[0].note
+    assert all(fit.recorded[0, post] for post in range(3))
+
+
+def test_a_group_member_without_pairs_in_the_window_stays_unrecorded():
+    window = _window(1, {(0, 0): NEAR, (0, 1): [0]}, probability=0.12)
+    fit = fit_pathways(SIGNS, [window])
+    assert moments(NEAR, fit.laws[0, 0]).probability == pytest.approx(0.12, abs=1e-10)
+    assert not fit.recorded[0, 1]
+    assert "rows of their own" not in fit.rows[0].note
+
+
+def test_pathways_nobody_recorded_take_the_law_of_their_class_and_say_so():
+    windows = [
+        _one(1, NEAR, (0, 0), tested_n=100, connected_n=10),
+        _one(2, NEAR, (0, 1), tested_n=300, connected_n=90),
+        _one(3, NEAR, (2, 0), tested_n=50, connected_n=25),
+    ]
+    fit = fit_pathways(SIGNS, windows)
+    for pathway in itertools.product(range(3), repeat=2):
+        recorded = pathway in {(0, 0), (0, 1), (2, 0)}
+        assert fit.recorded[pathway] == recorded
+        assert np.isnan(fit.t0_low[pathway]) == (not recorded)
+        assert np.isnan(fit.t0_high[pathway]) == (not recorded)
+
+    def probability(pathway):
+        return moments(NEAR, fit.laws[pathway]).probability
+
+    # All four excitatory pairs: 100 connected of 400 tested.
+    for pathway in ((1, 0), (1, 1)):
+        assert probability(pathway) == pytest.approx(100 / 400, abs=1e-10)
+    # The class inhibitory to excitatory has one recorded pathway.
+    assert fit.laws[2, 1] == fit.laws[2, 0]
+    # No recorded pathway of the class: all 125 connected of 450 tested.
+    for pathway in ((0, 2), (1, 2), (2, 2)):
+        assert probability(pathway) == pytest.approx(125 / 450, abs=1e-10)
+
+
+def test_synapses_of_pathways_without_a_mean_come_from_like_pathways():
+    windows = [
+        _one(1, NEAR, (0, 0), probability=0.1, synapses_mean=2.4),
+        _one(2, NEAR, (0, 1), tested_n=50, connected_n=5),
+        _one(3, NEAR, (2, 2), probability=0.3, synapses_mean=1.3),
+    ]
+    fit = fit_pathways(SIGNS, windows)
+    for pathway in ((0, 1), (1, 0)):
+        t1 = fit.laws[pathway].t1
+        assert t1 == pytest.approx(fit.laws[0, 0].t1, rel=1e-12)
+    assert "taken from like pathways" in fit.rows[1].note
+    assert moments(NEAR, fit.laws[2, 2]).mean == pytest.approx(1.3, abs=1e-9)
+
+
+@pytest.mark.parametrize("sd", [0.6, 1.2])
+def test_a_measured_spread_lends_like_pathways_its_mean_only(sd):
+    """t1 means something else once t2 is fitted; it must not be lent without it."""
+    told = {"probability": 0.1, "synapses_mean": 2.4}
+    like = _one(2, NEAR, (0, 1), probability=0.1)
+    plain = fit_pathways(SIGNS, [_one(1, NEAR, **told), like])
+    spread = fit_pathways(SIGNS, [_one(1, NEAR, **told, synapses_sd=sd), like])
+    assert spread.laws[0, 0].t2 != 0.0
+    assert spread.laws[0, 1] == plain.laws[0, 1]
+    assert moments(NEAR, spread.laws[0, 1]).mean == pytest.approx(2.4, abs=1e-9)
+
+
+@pytest.mark.parametrize(("extreme", "low", "high"), [(1.0, 1.2, 2.4), (9.0, 2.4, 4.0)])
+def test_a_mean_at_its_limit_does_not_decide_its_whole_class(extreme, low, high):
+    """A mean of 1 or of every site puts t1 at infinity; like pathways share q."""
+    limit = _one(1, NEAR, (0, 0), probability=0.1, synapses_mean=extreme)
+    windows = [
+        limit,
+        _one(2, NEAR, (0, 1), probability=0.1, synapses_mean=2.4),
+        _one(3, NEAR, (1, 0), probability=0.1),
+    ]
+    fit = fit_pathways(SIGNS, windows)
+    assert low < moments(NEAR, fit.laws[1, 0]).mean < high
+    alone = fit_pathways(SIGNS, [limit]).laws[1, 0]
+    assert np.isfinite([alone.t0, alone.t1]).all()
+    assert moments(NEAR, alone).probability == pytest.approx(0.1, abs=1e-9)
+
+
+def test_without_any_synapse_number_the_law_adds_none_and_says_so():
+    fit = fit_pathways(SIGNS, [_one(1, NEAR, probability=0.1)])
+    assert fit.laws[0, 0].t1 == 0.0
+    assert "no row tells of synapses" in fit.rows[0].note
+
+
+def test_rows_kept_for_the_audit_change_no_law():
+    fitted = _one(1, NEAR, tested_n=60, connected_n=9)
+    audit = [
+        _one(2, NEAR, tested_n=60, connected_n=50, use="audit"),
+        _one(3, NEAR, (0, 1), tested_n=60, connected_n=50, use="audit"),
+    ]
+    alone, both = fit_pathways(SIGNS, [fitted]), fit_pathways(SIGNS, [fitted, *audit])
+    assert both.laws == alone.laws
+    assert both.recorded == alone.recorded
+    assert not both.recorded[0, 1]
+    assert [row.note for row in both.rows[1:]] == ["kept out of the fit"] * 2
+    assert both.rows[1].fitted.probability == pytest.approx(0.15, abs=1e-10)
+
+
+@pytest.mark.parametrize(
+    "windows",
+    [
+        [],
+        [_one(1, NEAR, tested_n=60, connected_n=9, use="audit")],
+        [_one(1, NEAR, synapses_mean=2.0)],
+        [_one(1, [0], tested_n=60, connected_n=9)],
+    ],
+    ids=["no row", "audit only", "no probability", "no pair in the window"],
+)
+def test_without_a_usable_row_there_is_no_fit(windows):
+    assert fit_pathways(SIGNS, windows) is None
