@@ -134,6 +134,9 @@ def read_mesh(path: Path, thickness_um: float) -> MeshVolume:
     if not mesh.is_watertight:
         rule = "is not closed (some edge does not join two triangles): fill its holes"
         raise _refuse(path, rule)
+    if not mesh.is_winding_consistent:
+        rule = "has triangles that face inward and others outward: unify its normals"
+        raise _refuse(path, rule)
     if mesh.body_count != 1:
         raise _refuse(path, f"holds {mesh.body_count} bodies; one is needed")
     if mesh.volume < 0:
