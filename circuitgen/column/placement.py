@@ -121,12 +121,12 @@ def _interleaved(number: np.ndarray) -> np.ndarray:
     return out
 
 
-def _order(types: np.ndarray, position: np.ndarray) -> np.ndarray:
-    """Order cells by type, tile by tile along a Z-curve (Morton 1966), by depth."""
-    if not types.size:
-        return np.zeros(0, int)
-    tile = np.floor((position[:, :2] - position[:, :2].min(axis=0)) / _TILE_UM)
-    tile = tile.astype(np.int64)
+def _order(types: np.ndarray, position: np.ndarray, low_um: np.ndarray) -> np.ndarray:
+    """Order cells by type, tile by tile along a Z-curve (Morton 1966), by depth.
+
+    Tiles begin at the volume's lowest corner: other cells cannot move them.
+    """
+    tile = np.floor((position[:, :2] - low_um[:2]) / _TILE_UM).astype(np.int64)
     curve = _interleaved(tile[:, 0]) | (_interleaved(tile[:, 1]) << 1)
     x, y, z = position.T
     return np.lexsort([y, x, -z, curve, types])
@@ -200,7 +200,7 @@ def place_cells(spec: Spec, arbors: Sequence[Sequence[Arbor]]) -> Placement:
     counts, radii = cell_counts(spec, volume), _radii(spec, arbors)
     _check_room(spec, volume, counts, radii)
     types, layers, position = _place_somata(spec, volume, counts, radii)
-    order = _order(types, position)
+    order = _order(types, position, volume.low_um)
     types, layers, position = types[order], layers[order], position[order]
     draws = uniforms(spec.seed, "turn and reconstruction", np.arange(types.size))
     arbor_index = np.zeros(types.size, np.int32)
