@@ -15,6 +15,8 @@ from circuitgen.core.errors import InputError, Problem, nearest_name
 
 _MOST_NODES = 200_000
 _SHOWN_CHARACTERS = 60
+_PLAIN_TAGS = ("tag:yaml.org,2002:map", "tag:yaml.org,2002:seq")
+_MERGE_TAG = "tag:yaml.org,2002:merge"
 
 Location = tuple[str | int, ...]
 
@@ -107,6 +109,9 @@ class _Walk:
             self.refuse(node, (), f"the file has more than {_MOST_NODES} fields")
             raise InputError(self.problems)
         self.lines.setdefault(location, node.start_mark.line + 1)
+        if isinstance(node, yaml.CollectionNode) and node.tag not in _PLAIN_TAGS:
+            self.refuse(node, location, f"has the tag {node.tag}; plain values only")
+            return None
         if isinstance(node, yaml.MappingNode):
             return self.mapping(node, location)
         if isinstance(node, yaml.SequenceNode):
@@ -128,6 +133,9 @@ class _Walk:
                 continue
             key = key_node.value
             here = (*location, key)
+            if key_node.tag == _MERGE_TAG:
+                self.refuse(key_node, here, "is not supported; write the fields out")
+                continue
             if key in out:
                 first = self.lines[here]
                 self.refuse(key_node, here, f"is given twice (first on line {first})")
@@ -137,27 +145,33 @@ class _Walk:
         return out
 
 
+def _syntax_problem(path: Path, text: str, error: yaml.YAMLError) -> Problem:
+    if isinstance(error, yaml.reader.ReaderError):
+        line = text.count("\n", 0, error.position) + 1
+        rule = f"is not valid YAML: the character {ascii(chr(error.character))}"
+        return Problem(str(path), line, "", rule)
+    mark = getattr(error, "problem_mark", None)
+    rule = f"is not valid YAML: {getattr(error, 'problem', None) or error}"
+    return Problem(str(path), mark.line + 1 if mark else None, "", rule)
+
+
 def read_document(path: Path) -> Document:
     """Read a YAML file whose top level is a mapping.
 
     Raises InputError with the line of each syntax error, duplicate key or tag.
     """
     text = read_text(path)
+    walk = _Walk(path)
     try:
         node = yaml.compose(text, _Loader)
+        data = walk.value(node, ()) if isinstance(node, yaml.MappingNode) else None
     except yaml.YAMLError as error:
-        mark = getattr(error, "problem_mark", None)
-        line = mark.line + 1 if mark else None
-        rule = f"is not valid YAML: {getattr(error, 'problem', None) or error}"
-        raise InputError([Problem(str(path), line, "", rule)]) from None
+        raise InputError([_syntax_problem(path, text, error)]) from None
+    except RecursionError:
+        raise InputError([Problem(str(path), 1, "", "is nested too deep")]) from None
     if not isinstance(node, yaml.MappingNode):
         rule = "is empty" if node is None else "must hold 'key: value' lines at the top"
         raise InputError([Problem(str(path), 1, "", rule)])
-    walk = _Walk(path)
-    try:
-        data = walk.value(node, ())
-    except RecursionError:
-        raise InputError([Problem(str(path), 1, "", "is nested too deep")]) from None
     if walk.problems:
         raise InputError(walk.problems)
     return Document(Path(path), text, data, walk.lines)
@@ -213,6 +227,7 @@ _KINDS = {
 
 def _shown(value: object) -> str:
     text = repr(value) if isinstance(value, str | bool) else str(value)
+    text = "nothing" if value is None else text
     text = text if len(text) <= _SHOWN_CHARACTERS else text[:_SHOWN_CHARACTERS] + "…"
     return "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in text)
 
