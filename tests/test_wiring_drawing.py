@@ -47,6 +47,11 @@ def _pairs(n, most, pathways, seed=5):
     return pre, post, rng.integers(0, most + 1, n), rng.integers(0, pathways, n)
 
 
+def _plain(kernel):
+    """Return a kernel as plain Python; it is that already with the compiler off."""
+    return getattr(kernel, "py_func", kernel)
+
+
 def _pooled_chi_square(seen, expected):
     """Chi-square after joining cells expected fewer than five times."""
     big = expected >= 5
@@ -159,7 +164,7 @@ def test_count_kernel_equals_its_twin(compiled):
     uniform[:200, 1] = np.nextafter(1.0, 0.0)
     uniform[200:300] = 0.0
     out = np.full(1500, -1, np.int32)
-    run = draw_counts if compiled else draw_counts.py_func
+    run = draw_counts if compiled else _plain(draw_counts)
     arrays = (tables.connects, tables.ways, tables.t1, tables.t2)
     run(uniform, a, pathway, *arrays, out)
     by_hand = [
@@ -175,7 +180,7 @@ def test_site_kernel_equals_its_twin(compiled):
     synapses = rng.integers(0, a + 1)
     uniform = rng.uniform(size=a.sum())
     out = np.zeros(a.sum(), np.bool_)
-    (choose if compiled else choose.py_func)(uniform, a, synapses, out)
+    (choose if compiled else _plain(choose))(uniform, a, synapses, out)
     first = np.cumsum(a) - a
     for i in range(a.size):
         own = slice(first[i], first[i] + a[i])

@@ -80,5 +80,7 @@ def uniforms(seed, stage, first, second=0, third=0, index=0) -> np.ndarray:
     words = np.broadcast_arrays(index, first, second, third)
     words = [np.ascontiguousarray(word, dtype=np.uint64).reshape(-1) for word in words]
     out = np.zeros((words[0].size, _DRAWS))
-    _fill_uniforms(np.uint64(seed), np.uint64(stage_key(stage)), *words, out)
+    # Products wrap around on purpose; numpy warns of it where kernels run uncompiled.
+    with np.errstate(over="ignore"):
+        _fill_uniforms(np.uint64(seed), np.uint64(stage_key(stage)), *words, out)
     return out
