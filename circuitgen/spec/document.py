@@ -228,6 +228,7 @@ _KINDS = {
 def _shown(value: object) -> str:
     text = repr(value) if isinstance(value, str | bool) else str(value)
     text = "nothing" if value is None else text
+    text = str(list(value)) if isinstance(value, tuple) else text
     text = text if len(text) <= _SHOWN_CHARACTERS else text[:_SHOWN_CHARACTERS] + "…"
     return "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in text)
 
@@ -249,10 +250,21 @@ def describe_error(model: type[BaseModel], error: dict) -> tuple[str, str | None
         return rule, nearest_name(value, names)
     if isinstance(context.get("error"), RuleError):
         return str(context["error"]), context["error"].nearest
+    if kind == "union_tag_not_found":
+        return f"= {_shown(value)} must be text or a list", None
     for prefix, meaning in _KINDS.items():
         if kind.startswith(prefix) and "too_" not in kind:
             return f"= {_shown(value)} must be {meaning}", None
     return f"= {_shown(value)}: {error['msg']}", None
+
+
+def _in_file(document: Document, error: dict) -> Location:
+    """Location of an error without the parts that pydantic adds to those of the file."""
+    location: Location = ()
+    for part in error["loc"]:
+        if (*location, part) in document.lines:
+            location = (*location, part)
+    return (*location, error["loc"][-1]) if error["type"] == "missing" else location
 
 
 def validation_problems(document: Document, model: type[BaseModel]):
@@ -262,7 +274,7 @@ def validation_problems(document: Document, model: type[BaseModel]):
     except ValidationError as failure:
         problems = []
         for error in failure.errors(include_url=False):
-            location = tuple(p for p in error["loc"] if not str(p).startswith("tuple["))
+            location = _in_file(document, error)
             rule, nearest = describe_error(model, {**error, "loc": location})
             problems.append(document.problem(location, rule, nearest))
         return None, problems

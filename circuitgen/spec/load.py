@@ -44,7 +44,8 @@ def _group_problems(document: Document) -> list[Problem]:
         if group in types:
             rule = "is also the name of a cell type"
             problems.append(document.problem(("groups", group), rule))
-        members = members if isinstance(members, tuple) else ()
+        if not isinstance(members, tuple):
+            continue
         if not members:
             problems.append(document.problem(("groups", group), "names no cell type"))
         for index, member in enumerate(members):
@@ -66,13 +67,13 @@ def _glob(folder: Path, pattern: str) -> list[Path]:
 
 
 def _nearest_file(folder: Path, pattern: str) -> str | None:
-    target = folder / pattern
+    parent = Path(pattern).parent
     try:
-        names = [path.name for path in target.parent.iterdir()]
-    except OSError:
+        names = [path.name for path in (folder / parent).iterdir() if path.is_file()]
+    except (ValueError, OSError):
         return None
-    near = nearest_name(target.name, names)
-    return str(Path(pattern).parent / near) if near else None
+    near = nearest_name(Path(pattern).name, names)
+    return str(parent / near) if near else None
 
 
 def _find_morphologies(document: Document):
@@ -84,6 +85,9 @@ def _find_morphologies(document: Document):
         value = fields.get("morphologies") if isinstance(fields, dict) else None
         patterns = value if isinstance(value, tuple) else (value,)
         files: set[Path] = set()
+        if not patterns:
+            place = ("cell_types", name, "morphologies")
+            problems.append(document.problem(place, "names no file"))
         for pattern in patterns:
             if not isinstance(pattern, str):
                 continue

@@ -6,7 +6,15 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Annotated, Literal
 
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field, model_validator
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    ConfigDict,
+    Discriminator,
+    Field,
+    Tag,
+    model_validator,
+)
 
 from circuitgen.spec.document import RuleError
 
@@ -26,6 +34,20 @@ def _check_name(name: str) -> str:
 Name = Annotated[str, AfterValidator(_check_name)]
 Positive = Annotated[float, Field(gt=0, allow_inf_nan=False)]
 NotNegative = Annotated[float, Field(ge=0, allow_inf_nan=False)]
+
+
+def _text_or_list(value: object) -> str | None:
+    """Tag of the branch by which a value is judged, so that one mistake is one."""
+    return {str: "text", tuple: "list"}.get(type(value))
+
+
+_Either = Discriminator(_text_or_list)
+Files = Annotated[
+    Annotated[str, Tag("text")] | Annotated[tuple[str, ...], Tag("list")], _Either
+]
+Rows = Annotated[
+    Annotated[str, Tag("text")] | Annotated[tuple[dict, ...], Tag("list")], _Either
+]
 
 
 class Part(BaseModel):
@@ -80,7 +102,7 @@ class CellType(Part):
     sign: Literal["excitatory", "inhibitory"]
     density_per_mm3: dict[str, NotNegative] = Field(default_factory=dict)
     count: dict[str, Annotated[int, Field(ge=0, le=10**8)]] = Field(default_factory=dict)
-    morphologies: str | tuple[str, ...]
+    morphologies: Files
     upright: Upright = "y"
     soma_radius_um: Positive | None = None
     targets: tuple[Target, ...] = ("soma", "basal", "apical")
@@ -120,7 +142,7 @@ class SpecFile(Part):
     cell_types: Annotated[dict[Name, CellType], Field(min_length=1)]
     groups: dict[Name, tuple[str, ...]] = Field(default_factory=dict)
     appositions: AppositionRules = AppositionRules()
-    recordings: str | tuple[dict, ...] = ()
+    recordings: Rows = ()
     conduction: Conduction = Conduction()
 
 
