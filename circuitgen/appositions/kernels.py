@@ -1,6 +1,6 @@
 """Compiled loops of the apposition search: arrays in, arrays out.
 
-Targets of a block are sorted by voxel, the z axis fastest, so that all that lie near
+Targets are sorted by voxel, the z axis fastest, so that all that lie near
 an axon segment are a few contiguous runs of rows. A whole run is tested at once in
 single precision by bounds that can only err on the side of keeping a row; what is left
 is decided in double precision from the cells' own frames, so that an answer never
@@ -30,9 +30,9 @@ Placed = namedtuple("Placed", "arbor position turn mask")
 # A box of voxels: corner `origin`, voxel sizes and counts along x, y, z, periods in x
 # and y (0: open).
 Grid = namedtuple("Grid", "origin size shape period")
-# Targets of one block, sorted by voxel; voxel v holds rows first[v] to first[v + 1].
+# Targets of some cells, sorted by voxel; voxel v holds rows first[v] to first[v + 1].
 # `shapes` (8, n) holds single-precision copies relative to the grid's origin: middle,
-# half, half length, radius; `owner` and `row` lead to the cell of the block and to the
+# half, half length, radius; `owner` and `row` lead to the cell in the list and to the
 # row in Targets. `reach`: the largest half length plus radius; `longest`: the largest
 # number of rows in a column of voxels along z.
 Layer = namedtuple("Layer", "grid first shapes owner row kind reach longest")
@@ -45,9 +45,9 @@ Hits = namedtuple("Hits", "owner axon target gap axon_fraction target_fraction")
 Sites = namedtuple("Sites", "axon target axon_fraction target_fraction gap")
 Pairs = namedtuple("Pairs", "post pre count")
 
-# Memory that one task uses again and again: scratch (4, 3) for two segments, middle and
-# half (3,) of the axon segment, marks of one run of rows, list of the rows found.
-Work = namedtuple("Work", "scratch middle half near found")
+# Memory that one task uses again and again: segment (2, 3), the placed axon segment, its
+# middle and half (3,), marks of one run of rows, list of the rows found.
+Work = namedtuple("Work", "segment middle half near found")
 
 RUN_LENGTH = 16
 _OWN_KINDS = np.uint8(12)  # an autapse may sit on basal and apical dendrite only
@@ -64,55 +64,47 @@ def _place(local, turn, position, out):
 
 
 @kernel
-def _point_to_segment(p, a, b):
-    """Squared distance from p to segment ab, and the fraction of the nearest point."""
-    along = square = 0.0
-    for axis in range(3):
-        side = b[axis] - a[axis]
-        along += (p[axis] - a[axis]) * side
-        square += side * side
+def _point_to_segment(px, py, pz, ax, ay, az, ux, uy, uz):
+    """Squared distance from p to the segment from a along u, and the fraction there."""
+    wx, wy, wz = px - ax, py - ay, pz - az
+    square = ux * ux + uy * uy + uz * uz
+    along = wx * ux + wy * uy + wz * uz
     fraction = min(max(along / square, 0.0), 1.0) if square > 0.0 else 0.0
-    distance = 0.0
-    for axis in range(3):
-        nearest = a[axis] + fraction * (b[axis] - a[axis])
-        distance += (p[axis] - nearest) ** 2
-    return distance, fraction
+    wx, wy, wz = wx - fraction * ux, wy - fraction * uy, wz - fraction * uz
+    return wx * wx + wy * wy + wz * wz, fraction
 
 
 @kernel
-def closest_points(a, b, c, d):
-    """Closest approach of segments ab and cd.
+def _closest(ax, ay, az, ux, uy, uz, cx, cy, cz, vx, vy, vz):
+    """Closest approach of the segments from a along u and from c along v.
 
-    Returns the squared distance and the fractions along ab and cd. The interior
+    Returns the squared distance and the fractions along both. The interior
     solution of the two lines stands alone when it lies inside both segments and the
     lines are not nearly parallel; otherwise the four end points compete with it.
     """
-    uu = uv = vv = uw = vw = 0.0
-    for axis in range(3):
-        u, v, w = b[axis] - a[axis], d[axis] - c[axis], c[axis] - a[axis]
-        uu += u * u
-        uv += u * v
-        vv += v * v
-        uw += u * w
-        vw += v * w
+    wx, wy, wz = cx - ax, cy - ay, cz - az
+    uu, vv = ux * ux + uy * uy + uz * uz, vx * vx + vy * vy + vz * vz
+    uv, uw = ux * vx + uy * vy + uz * vz, ux * wx + uy * wy + uz * wz
+    vw = vx * wx + vy * wy + vz * wz
     best, s_best, t_best = np.inf, 0.0, 0.0
     determinant = uu * vv - uv * uv
     if determinant > 0.0:
         s = (uw * vv - uv * vw) / determinant
         t = (uv * s - vw) / vv
         if 0.0 <= s <= 1.0 and 0.0 <= t <= 1.0:
-            best, s_best, t_best = 0.0, s, t
-            for axis in range(3):
-                p = a[axis] + s * (b[axis] - a[axis])
-                q = c[axis] + t * (d[axis] - c[axis])
-                best += (p - q) ** 2
+            x, y, z = wx + t * vx - s * ux, wy + t * vy - s * uy, wz + t * vz - s * uz
+            best, s_best, t_best = x * x + y * y + z * z, s, t
             if determinant > _PARALLEL * uu * vv:
                 return best, s_best, t_best
     for end in range(2):
-        distance, t = _point_to_segment(b if end else a, c, d)
+        distance, t = _point_to_segment(
+            ax + end * ux, ay + end * uy, az + end * uz, cx, cy, cz, vx, vy, vz
+        )
         if distance < best:
             best, s_best, t_best = distance, float(end), t
-        distance, s = _point_to_segment(d if end else c, a, b)
+        distance, s = _point_to_segment(
+            cx + end * vx, cy + end * vy, cz + end * vz, ax, ay, az, ux, uy, uz
+        )
         if distance < best:
             best, s_best, t_best = distance, s, float(end)
     return best, s_best, t_best
@@ -120,13 +112,25 @@ def closest_points(a, b, c, d):
 
 @kernel
 def segment_distances(a, b, c, d):
-    """Distances and fractions for rows of segment pairs, arrays (n, 3) each."""
+    """Distances and fractions of closest approach of segments ab and cd, rows (n, 3)."""
     out = np.zeros((a.shape[0], 3))
     for row in range(a.shape[0]):
-        square, s, t = closest_points(a[row], b[row], c[row], d[row])
-        out[row, 0] = np.sqrt(square)
-        out[row, 1] = s
-        out[row, 2] = t
+        u, v = b[row] - a[row], d[row] - c[row]
+        square, s, t = _closest(
+            a[row, 0],
+            a[row, 1],
+            a[row, 2],
+            u[0],
+            u[1],
+            u[2],
+            c[row, 0],
+            c[row, 1],
+            c[row, 2],
+            v[0],
+            v[1],
+            v[2],
+        )
+        out[row, 0], out[row, 1], out[row, 2] = np.sqrt(square), s, t
     return out
 
 
@@ -208,8 +212,8 @@ def fill_layer(targets, placed, cells, layer):
 
 
 @kernel
-def _mark_near(middle, half, half_length, reach, rows, near):
-    """Mark the rows (8, n) that may lie within reach of an axon segment.
+def _mark_near(middle, half, half_length, reach, shapes, low, high, near):
+    """Mark the rows low to high that may lie within reach of an axon segment.
 
     Along any unit direction w, |m.w| - |u.w| - |v.w| bounds the distance of two
     segments from below (m between the middles, u and v the halves). Two directions
@@ -217,16 +221,17 @@ def _mark_near(middle, half, half_length, reach, rows, near):
     test of the bounding spheres. No branch, so that the compiler can test many rows
     at once.
     """
-    x, y, z, radius = rows[0], rows[1], rows[2], rows[7]
-    half_x, half_y, half_z, half_lengths = rows[3], rows[4], rows[5], rows[6]
     ax, ay, az = middle[0], middle[1], middle[2]
     ux, uy, uz = half[0], half[1], half[2]
-    for i in range(rows.shape[1]):
-        mx, my, mz = x[i] - ax, y[i] - ay, z[i] - az
-        vx, vy, vz = half_x[i], half_y[i], half_z[i]
-        far = reach + radius[i]
+    # Unsigned indices, for a sign to check at every step would stop vectorisation.
+    first = np.uint64(low)
+    for i in range(np.uint64(high - low)):
+        row = first + i
+        mx, my, mz = shapes[0, row] - ax, shapes[1, row] - ay, shapes[2, row] - az
+        vx, vy, vz = shapes[3, row], shapes[4, row], shapes[5, row]
+        far = reach + shapes[7, row]
         square = mx * mx + my * my + mz * mz
-        sphere = half_length + half_lengths[i] + far
+        sphere = half_length + shapes[6, row] + far
         along = abs(ux * mx + uy * my + uz * mz) + abs(vx * mx + vy * my + vz * mz)
         nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
         # u and v are perpendicular to n but for rounding, which counts when n is short.
@@ -356,47 +361,49 @@ def _list_marked(near, count, low, found, n):
 
 
 @kernel
-def _nearest_copy(period, scratch):
-    """Move the target (rows 2, 3) by whole periods to the copy nearest to the axon."""
-    for axis in range(2):
-        if period[axis] > 0.0:
-            apart = scratch[0, axis] + scratch[1, axis]
-            apart -= scratch[2, axis] + scratch[3, axis]
-            shift = period[axis] * np.round(0.5 * apart / period[axis])
-            scratch[2, axis] += shift
-            scratch[3, axis] += shift
+def _shift(period, apart):
+    """Whole periods that bring a copy nearest to what lies `apart` from it."""
+    return period * np.round(apart / period) if period > 0.0 else 0.0
 
 
 @kernel
 def _test(axons, targets, placed, layer, rules, cells, pre, axon, work, m, hits, n):
     """Decide the m listed rows in double precision; append those close enough."""
-    scratch, found, mask = work.scratch, work.found, placed.mask[pre]
     while hits.owner.size < n + m:
         hits = _grow_hits(hits)
+    mask, segment = placed.mask[pre], work.segment
+    ax, ay, az = segment[0, 0], segment[0, 1], segment[0, 2]
+    ux, uy, uz = segment[1, 0] - ax, segment[1, 1] - ay, segment[1, 2] - az
     a_radius = axons.start_radius[axon]
     a_taper = axons.end_radius[axon] - a_radius
     for k in range(m):
-        item = found[k]
+        item = work.found[k]
         owner, row, kind = layer.owner[item], layer.row[item], layer.kind[item]
         post = cells[owner]
         own = post == pre and not (rules.autapses and kind & _OWN_KINDS)
         if own or not kind & mask:
             continue
-        turn, position = placed.turn[post], placed.position[post]
-        _place(targets.start[row], turn, position, scratch[2])
-        _place(targets.end[row], turn, position, scratch[3])
-        _nearest_copy(layer.grid.period, scratch)
-        square, s, t = closest_points(scratch[0], scratch[1], scratch[2], scratch[3])
+        cosine, sine = placed.turn[post, 0], placed.turn[post, 1]
+        x, y, z = targets.start[row, 0], targets.start[row, 1], targets.start[row, 2]
+        cx = cosine * x - sine * y + placed.position[post, 0]
+        cy = sine * x + cosine * y + placed.position[post, 1]
+        cz = z + placed.position[post, 2]
+        x, y = targets.end[row, 0] - x, targets.end[row, 1] - y
+        vx, vy, vz = (
+            cosine * x - sine * y,
+            sine * x + cosine * y,
+            targets.end[row, 2] - z,
+        )
+        cx += _shift(layer.grid.period[0], ax + 0.5 * ux - cx - 0.5 * vx)
+        cy += _shift(layer.grid.period[1], ay + 0.5 * uy - cy - 0.5 * vy)
+        square, s, t = _closest(ax, ay, az, ux, uy, uz, cx, cy, cz, vx, vy, vz)
         b_radius = targets.start_radius[row]
         b_radius += t * (targets.end_radius[row] - b_radius)
         gap = max(np.sqrt(square) - a_radius - s * a_taper - b_radius, 0.0)
         if gap <= rules.max_gap:
-            hits.owner[n], hits.axon[n], hits.target[n] = (
-                owner,
-                axon,
-                targets.segment[row],
-            )
-            hits.gap[n], hits.axon_fraction[n], hits.target_fraction[n] = gap, s, t
+            hits.owner[n], hits.axon[n] = owner, axon
+            hits.target[n], hits.gap[n] = targets.segment[row], gap
+            hits.axon_fraction[n], hits.target_fraction[n] = s, t
             n += 1
     return hits, n
 
@@ -412,17 +419,27 @@ def _voxel_range(middle, extent, grid, axis):
 
 
 @kernel
+def _into_box(step, voxels, period):
+    """Bring a voxel's index back into a periodic box; also return the shift of that."""
+    if step < 0:
+        return step + voxels, -period
+    if step >= voxels:
+        return step - voxels, period
+    return step, 0.0
+
+
+@kernel
 def _look(layer, reach, work):
-    """List the rows of a layer that may be close to the segment in scratch rows 0, 1.
+    """List the rows of a layer that may be close to the placed axon segment.
 
     `reach` is the axon's radius plus the largest gap and the slack. Returns how many
     rows of the layer stand in `work.found`.
     """
-    scratch, middle, half, grid = work.scratch, work.middle, work.half, layer.grid
-    _middle_of(scratch[0], scratch[1], grid, middle)
+    segment, middle, half, grid = work.segment, work.middle, work.half, layer.grid
+    _middle_of(segment[0], segment[1], grid, middle)
     square, m = 0.0, 0
     for axis in range(3):
-        half[axis] = 0.5 * (scratch[1, axis] - scratch[0, axis])
+        half[axis] = 0.5 * (segment[1, axis] - segment[0, axis])
         square += float(half[axis]) ** 2
     half_length, reach = np.float32(np.sqrt(square)), np.float32(reach)
     extent = layer.reach + reach
@@ -432,20 +449,19 @@ def _look(layer, reach, work):
     x_low, x_high = _voxel_range(middle, abs(half[0]) + extent, grid, 0)
     y_low, y_high = _voxel_range(middle, abs(half[1]) + extent, grid, 1)
     x_middle, y_middle = middle[0], middle[1]
-    for x in range(x_low, x_high + 1):
-        turns_x = x // grid.shape[0]
-        middle[0] = x_middle - turns_x * grid.period[0]
-        for y in range(y_low, y_high + 1):
-            turns_y = y // grid.shape[1]
-            middle[1] = y_middle - turns_y * grid.period[1]
-            column = (x - turns_x * grid.shape[0]) * grid.shape[1]
-            column = (column + y - turns_y * grid.shape[1]) * grid.shape[2]
+    for step_x in range(x_low, x_high + 1):
+        x, shift = _into_box(step_x, grid.shape[0], grid.period[0])
+        middle[0] = x_middle - shift
+        for step_y in range(y_low, y_high + 1):
+            y, shift = _into_box(step_y, grid.shape[1], grid.period[1])
+            middle[1] = y_middle - shift
+            column = (x * grid.shape[1] + y) * grid.shape[2]
             low, high = layer.first[column + z_low], layer.first[column + z_high + 1]
-            if low == high:
-                continue
-            rows = layer.shapes[:, low:high]
-            _mark_near(middle, half, half_length, reach, rows, work.near)
-            m = _list_marked(work.near, high - low, low, work.found, m)
+            if low < high:
+                _mark_near(
+                    middle, half, half_length, reach, layer.shapes, low, high, work.near
+                )
+                m = _list_marked(work.near, high - low, low, work.found, m)
     return m
 
 
@@ -464,17 +480,17 @@ def _clear_of(center, radius, turn, position, grid, place):
 
 @kernel
 def _collect(axons, layers, placed, rules, cells, pre, work, hits):
-    """Collect the hits of one cell's axon in the layers of one block."""
-    scratch, n = work.scratch, 0
+    """Collect the hits of one cell's axon in all layers."""
+    segment, n = work.segment, 0
     arbor, turn, position = placed.arbor[pre], placed.turn[pre], placed.position[pre]
     for run in range(axons.run_first[arbor], axons.run_first[arbor + 1]):
         center, radius = axons.run_center[run], axons.run_radius[run] + rules.slack
         for targets, layer in layers:
-            if _clear_of(center, radius, turn, position, layer.grid, scratch[0]):
+            if _clear_of(center, radius, turn, position, layer.grid, segment[0]):
                 continue
             for axon in range(axons.run_bounds[run], axons.run_bounds[run + 1]):
-                _place(axons.start[axon], turn, position, scratch[0])
-                _place(axons.end[axon], turn, position, scratch[1])
+                _place(axons.start[axon], turn, position, segment[0])
+                _place(axons.end[axon], turn, position, segment[1])
                 reach = max(axons.start_radius[axon], axons.end_radius[axon])
                 m = _look(layer, reach + rules.max_gap + rules.slack, work)
                 if m:
@@ -571,7 +587,7 @@ def _new_work(layers):
     for _, layer in layers:
         rows, longest = max(rows, layer.owner.size), max(longest, layer.longest)
     return Work(
-        np.zeros((4, 3)),
+        np.zeros((2, 3)),
         np.zeros(3, np.float32),
         np.zeros(3, np.float32),
         np.zeros(8 * (longest // 8 + 2), np.uint8),
@@ -581,10 +597,10 @@ def _new_work(layers):
 
 @kernel
 def search(axons, layers, placed, rules, cells, pre_cells):
-    """Find the appositions of the axons of `pre_cells` on the cells of one block.
+    """Find the appositions of the axons of `pre_cells` on the targets of `cells`.
 
-    `layers` is a tuple of (Targets, Layer). Returns Pairs (by presynaptic cell in the
-    order given, then by cell of the block, `post` counting within it) and their Sites.
+    `layers` is a tuple of (Targets, Layer) made for `cells`. Returns Pairs (by
+    presynaptic cell in the order given, then in the order of `cells`) and their Sites.
     """
     work = _new_work(layers)
     hits, sites, sites_n = _new_hits(1024), _new_sites(4096), 0
@@ -607,7 +623,8 @@ def search(axons, layers, placed, rules, cells, pre_cells):
             )
             if pairs_n == post.size:
                 post, pre_out, count = _longer(post), _longer(pre_out), _longer(count)
-            post[pairs_n], pre_out[pairs_n], count[pairs_n] = owner, pre, kept
+            post[pairs_n], pre_out[pairs_n] = cells[owner], pre
+            count[pairs_n] = kept
             pairs_n += 1
     return (
         Pairs(post[:pairs_n].copy(), pre_out[:pairs_n].copy(), count[:pairs_n].copy()),
@@ -619,13 +636,3 @@ def search(axons, layers, placed, rules, cells, pre_cells):
             sites.gap[:sites_n].copy(),
         ),
     )
-
-
-@kernel
-def gather_runs(begin, length, source, out):
-    """Copy runs source[begin[i]:begin[i] + length[i]] one after another into `out`."""
-    place = 0
-    for i in range(begin.size):
-        for j in range(length[i]):
-            out[place] = source[begin[i] + j]
-            place += 1

@@ -13,18 +13,23 @@ from circuitgen.morphology.arbor import Arbor, Kind
 # Bits of the kinds of target; a presynaptic type's mask is a sum of them.
 TARGET_BITS = {"soma": 1, "axon_initial_segment": 2, "basal": 4, "apical": 8}
 TARGET_NAMES = {bit: name for name, bit in TARGET_BITS.items()}
-_THIN_SHARE = 0.95
+# Radii, in medians of all targets, at which layers of the search are parted.
+_LAYER_FACTORS = (2.0, 6.0)
 _KIND_BITS = np.zeros(8, np.uint8)
 _KIND_BITS[[Kind.SOMA, Kind.BASAL, Kind.APICAL]] = 1, 4, 8
 
 
 @dataclass(frozen=True)
 class Reach:
-    """How far each arbor's centre lines go sideways, and their lowest and highest z."""
+    """How far each arbor's centre lines go sideways, and their lowest and highest z.
+
+    `thickest_um` is the largest sum of two radii of any arbors.
+    """
 
     side_um: np.ndarray
     lowest_um: np.ndarray
     highest_um: np.ndarray
+    thickest_um: float
 
 
 @dataclass(frozen=True)
@@ -87,14 +92,18 @@ def _pack_targets(arbors: Sequence[Arbor], low_um: float, high_um: float) -> Tar
 
 
 def pack_targets(arbors: Sequence[Arbor]) -> tuple[Targets, ...]:
-    """Pack targets in two layers, thin and thick.
+    """Pack targets in layers of like radius.
 
     A search looks as far as the thickest target of a layer reaches, so the somata and
     the few thick trunks are kept apart from the many thin branches.
     """
     radii = [_radius(arbor)[target_bits(arbor) > 0] for arbor in arbors]
-    limit = float(np.quantile(np.concatenate(radii), _THIN_SHARE))
-    layers = _pack_targets(arbors, -np.inf, limit), _pack_targets(arbors, limit, np.inf)
+    middle = float(np.median(np.concatenate(radii)))
+    limits = [-np.inf, *(middle * factor for factor in _LAYER_FACTORS), np.inf]
+    layers = [
+        _pack_targets(arbors, low, high)
+        for low, high in zip(limits[:-1], limits[1:], strict=True)
+    ]
     return tuple(layer for layer in layers if layer.kind.size)
 
 
@@ -147,6 +156,7 @@ def _reach_of(arbors: Sequence[Arbor]) -> Reach:
         np.array([np.hypot(end[:, 0], end[:, 1]).max() for end in ends]),
         np.array([end[:, 2].min() for end in ends]),
         np.array([end[:, 2].max() for end in ends]),
+        2 * max(float(_radius(arbor).max()) for arbor in arbors),
     )
 
 

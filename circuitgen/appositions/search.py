@@ -1,4 +1,4 @@
-"""Appositions of one block of postsynaptic cells: voxels, threads, order of rows."""
+"""Appositions of one block of presynaptic cells: voxels, threads, order of rows."""
 
 from __future__ import annotations
 
@@ -22,7 +22,7 @@ _SINGLE_ERROR = 1e-6
 class Appositions:
     """Ordered pairs with at least one apposition, and their sites.
 
-    Pairs are sorted by postsynaptic, then presynaptic cell; the sites of pair i are
+    Pairs are sorted by presynaptic, then postsynaptic cell; the sites of pair i are
     rows ``first[i]:first[i + 1]``, closest first.
 
     Attributes
@@ -64,19 +64,21 @@ def _box_of(scene: Scene, cells: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
 
 
 def _make_grid(scene: Scene, cells: np.ndarray, reach_um: float) -> kernels.Grid:
-    """Lay voxels of about half the reach over a block; a period holds whole voxels."""
+    """Lay voxels of about the reach over some cells; a period holds whole ones."""
     low, high = _box_of(scene, cells)
     period = np.array([*scene.wrap_um, 0.0])
     extent = np.where(period > 0, period, high - low + 1e-3)
-    size = max(_VOXEL_SHARE * reach_um, np.cbrt(extent.prod() / _MOST_VOXELS))
-    shape = np.where(period > 0, np.floor(extent / size), np.ceil(extent / size))
+    # Rows run along z: thin voxels there cost nothing but their number.
+    wanted = _VOXEL_SHARE * reach_um * np.array([1.0, 1.0, 0.5])
+    wanted *= max(1.0, np.cbrt((extent / wanted).prod() / _MOST_VOXELS))
+    shape = np.where(period > 0, np.floor(extent / wanted), np.ceil(extent / wanted))
     shape = np.maximum(shape, 1).astype(np.int64)
-    sizes = np.where(period > 0, extent / shape, size)
+    sizes = np.where(period > 0, extent / shape, wanted)
     return kernels.Grid(origin=low, size=sizes, shape=shape, period=period)
 
 
 def _make_layer(scene, targets, cells) -> kernels.Layer:
-    """Sort the targets of a block by voxel."""
+    """Sort the targets of one layer by voxel."""
     radius = np.maximum(targets.start_radius, targets.end_radius)
     half_length = np.linalg.norm(targets.end - targets.start, axis=1) / 2
     reach_um = float((radius + half_length).max())
@@ -104,14 +106,44 @@ def _slack_um(scene: Scene, layers) -> float:
     return _SINGLE_ERROR * max(extents)
 
 
-def _search_tasks(scene, layers, rules, cells, threads):
-    """Search all axons in tasks of a few cells; results in order of the tasks."""
+@dataclass(frozen=True)
+class TargetIndex:
+    """The targets of some cells sorted by voxel, ready for any number of searches."""
+
+    scene: Scene
+    cells: np.ndarray
+    layers: tuple
+
+
+def reachable_cells(scene: Scene, pre_cells: np.ndarray) -> np.ndarray:
+    """Return the cells whose boxes meet the box around the axons of `pre_cells`."""
     everyone = np.arange(scene.placed.arbor.size)
+    low, high = _box_of(scene, pre_cells)
+    arbor, position = scene.placed.arbor, scene.placed.position
+    side, margin = scene.reach.side_um[arbor], scene.reach.thickest_um + scene.max_gap_um
+    near = np.ones(everyone.size, bool)
+    for axis, period in enumerate(scene.wrap_um):
+        if period == 0:
+            near &= position[:, axis] + side + margin >= low[axis]
+            near &= position[:, axis] - side - margin <= high[axis]
+    return everyone[near]
+
+
+def index_targets(scene: Scene, cells: np.ndarray) -> TargetIndex:
+    """Sort the targets of `cells` (increasing ids) by voxel."""
+    cells = np.asarray(cells, dtype=np.int64)
+    layers = tuple((part, _make_layer(scene, part, cells)) for part in scene.targets)
+    return TargetIndex(scene, cells, layers)
+
+
+def _search_tasks(index: TargetIndex, rules, pre_cells, threads: int):
+    """Search axons in tasks of a few cells; results in order of the tasks."""
+    scene = index.scene
     tasks = [
-        everyone[begin : begin + _CELLS_PER_TASK]
-        for begin in range(0, everyone.size, _CELLS_PER_TASK)
+        pre_cells[begin : begin + _CELLS_PER_TASK]
+        for begin in range(0, pre_cells.size, _CELLS_PER_TASK)
     ]
-    world = (scene.axons, layers, scene.placed, rules, cells)
+    world = (scene.axons, index.layers, scene.placed, rules, index.cells)
     pool = ThreadPoolExecutor(threads)
     try:
         return list(pool.map(lambda pre: kernels.search(*world, pre), tasks))
@@ -120,23 +152,16 @@ def _search_tasks(scene, layers, rules, cells, threads):
         pool.shutdown(cancel_futures=True)
 
 
-def _in_order(results, cells: np.ndarray) -> Appositions:
-    """Join the tasks' results, sorted by postsynaptic, then presynaptic cell."""
+def _joined(results) -> Appositions:
+    """Join the tasks' results, which are in order already."""
     pairs = [np.concatenate(part) for part in zip(*(r[0] for r in results), strict=True)]
     sites = [np.concatenate(part) for part in zip(*(r[1] for r in results), strict=True)]
     post, pre, count = pairs
-    order = np.argsort(post, kind="stable")
-    begin = (np.cumsum(count, dtype=np.int64) - count)[order]
-    sorted_sites = []
-    for source in sites:
-        out = np.zeros_like(source)
-        kernels.gather_runs(begin, count[order], source, out)
-        sorted_sites.append(out)
-    axon, target, axon_fraction, target_fraction, gap = sorted_sites
+    axon, target, axon_fraction, target_fraction, gap = sites
     return Appositions(
-        pre=pre[order],
-        post=cells[post[order]].astype(np.int32),
-        first=np.concatenate([[0], np.cumsum(count[order], dtype=np.int64)]),
+        pre=pre,
+        post=post,
+        first=np.concatenate([[0], np.cumsum(count, dtype=np.int64)]),
         pre_segment=axon,
         post_segment=target,
         pre_fraction=axon_fraction,
@@ -146,32 +171,30 @@ def _in_order(results, cells: np.ndarray) -> Appositions:
 
 
 def find_appositions(
-    scene: Scene, cells: np.ndarray | None = None, threads: int | None = None
+    index: TargetIndex, pre_cells: np.ndarray, threads: int | None = None
 ) -> Appositions:
-    """Find every apposition of all axons on the targets of a block of cells.
+    """Find every apposition of the axons of `pre_cells` on the targets of an index.
 
     The answer for a pair depends on its two cells alone: not on the block, on the
     threads, or on the other cells.
 
     Parameters
     ----------
-    scene : Scene
-        Cells in place, from `make_scene`.
-    cells : int array, optional
-        Postsynaptic cells of the block, increasing; all cells by default.
+    index : TargetIndex
+        From `index_targets`; of all cells that the axons may reach.
+    pre_cells : int array
+        Presynaptic cells of the block, increasing.
     threads : int, optional
         Threads that search at once; the machine's cores by default.
     """
-    everyone = np.arange(scene.placed.arbor.size)
-    cells = everyone if cells is None else np.asarray(cells, dtype=np.int64)
-    layers = tuple(
-        (targets, _make_layer(scene, targets, cells)) for targets in scene.targets
-    )
+    scene = index.scene
     rules = kernels.Rules(
         max_gap=scene.max_gap_um,
         min_spacing=scene.min_spacing_um,
-        slack=_slack_um(scene, layers),
+        slack=_slack_um(scene, index.layers),
         autapses=scene.autapses,
     )
-    results = _search_tasks(scene, layers, rules, cells, threads or os.cpu_count())
-    return _in_order(results, cells)
+    pre_cells = np.asarray(pre_cells, dtype=np.int64)
+    return _joined(
+        _search_tasks(index, rules, pre_cells, threads or os.cpu_count() or 1)
+    )

@@ -48,7 +48,7 @@ PAIRS = Table(
             "synapses_expected", "float32", "expected synapses, unconnected included"
         ),
     ),
-    ("post_cell_id", "pre_cell_id"),
+    ("pre_cell_id", "post_cell_id"),
 )
 
 _EDGE_COLUMNS = (
@@ -64,14 +64,14 @@ EDGES = Table(
     "edges",
     "connection of the drawn circuit",
     _EDGE_COLUMNS,
-    ("post_cell_id", "pre_cell_id"),
+    ("pre_cell_id", "post_cell_id"),
 )
 
 EDGES_TEXT = Table(
     "edges (CSV)",
     "connection of the drawn circuit",
     (*_EDGE_COLUMNS, _PRE_TYPE, _POST_TYPE),
-    ("post_cell_id", "pre_cell_id"),
+    ("pre_cell_id", "post_cell_id"),
 )
 
 SYNAPSES = Table(
@@ -93,7 +93,7 @@ SYNAPSES = Table(
         Column("dendrite_path_um", "float32", "along the target from the soma"),
         Column("delay_ms", "float32", "axon path / conduction speed + synaptic delay"),
     ),
-    ("post_cell_id", "pre_cell_id", "gap_um"),
+    ("pre_cell_id", "post_cell_id", "gap_um"),
 )
 
 PATHWAYS = Table(

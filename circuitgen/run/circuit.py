@@ -154,14 +154,13 @@ def soma_offsets(circuit: Circuit, pre, post) -> np.ndarray:
     return away
 
 
-def block_bounds(circuit: Circuit, most_targets: int) -> Sequence[tuple[int, int]]:
-    """Cut the cells into blocks of consecutive ids by their number of targets.
+def block_bounds(circuit: Circuit, most_segments: int) -> Sequence[tuple[int, int]]:
+    """Cut the cells into blocks of consecutive ids by their number of axon segments.
 
     The cut depends on the circuit alone, so that part files are the same everywhere.
     """
-    counts = sum(np.diff(layer.first) for layer in circuit.scene.targets)
-    running = np.cumsum(counts[circuit.cells.arbor_index])
-    block = (running - 1) // most_targets
+    counts = np.diff(circuit.scene.axons.first)[circuit.cells.arbor_index] + 1
+    block = (np.cumsum(counts) - 1) // most_segments
     edges = np.flatnonzero(np.diff(block)) + 1
     bounds = [0, *edges.tolist(), circuit.cells.cells_n]
     return list(zip(bounds[:-1], bounds[1:], strict=True))

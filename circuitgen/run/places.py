@@ -7,8 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from circuitgen.appositions import TARGET_BITS, TARGET_NAMES
-from circuitgen.appositions.scene import target_bits
+from circuitgen.appositions import TARGET_BITS, TARGET_NAMES, target_bits
 from circuitgen.run.circuit import Circuit
 
 

@@ -1,20 +1,27 @@
-"""Candidate sites on disk, one file for every block of postsynaptic cells."""
+"""Candidate sites on disk, one file for every block of presynaptic cells."""
 
 from __future__ import annotations
 
-import os
 from dataclasses import fields
 from pathlib import Path
 
 import numpy as np
 
-from circuitgen.appositions import Appositions, find_appositions
+from circuitgen.appositions import (
+    Appositions,
+    TargetIndex,
+    find_appositions,
+    index_targets,
+    reachable_cells,
+)
 from circuitgen.core.files import whole_file
 from circuitgen.core.progress import Progress
 from circuitgen.run.circuit import Circuit, block_bounds
 
-# Targets in one block: about a thousand cells, a few hundred megabytes while searching.
-TARGETS_PER_BLOCK = 1_500_000
+# Axon segments in one block: some hundred cells, a few hundred megabytes of sites.
+AXON_SEGMENTS_PER_BLOCK = 3_000_000
+# Targets sorted at once, at 45 bytes each.
+MOST_TARGETS_IN_INDEX = 60_000_000
 _NAMES = tuple(field.name for field in fields(Appositions))
 
 
@@ -25,9 +32,9 @@ class SiteStore:
     second search would take as long as the first.
     """
 
-    def __init__(self, circuit: Circuit, folder: Path, most_targets=TARGETS_PER_BLOCK):
+    def __init__(self, circuit: Circuit, folder: Path, most=AXON_SEGMENTS_PER_BLOCK):
         self._circuit, self._folder = circuit, folder
-        self.bounds = block_bounds(circuit, most_targets)
+        self.bounds = block_bounds(circuit, most)
 
     def path(self, block: int) -> Path:
         """Return the file of a block."""
@@ -35,19 +42,38 @@ class SiteStore:
 
     def find_all(self, threads: int | None) -> None:
         """Search every block that an earlier try has not finished."""
-        threads = threads or os.cpu_count() or 1
-        cells_n = self._circuit.cells.cells_n
-        with Progress("finding appositions", cells_n) as progress:
+        index = None
+        with Progress("finding appositions", self._circuit.cells.cells_n) as progress:
             for block, (low, high) in enumerate(self.bounds):
                 if self.path(block).exists():
                     progress.advance(high - low, resumed=True)
                     continue
-                found = find_appositions(
-                    self._circuit.scene, np.arange(low, high), threads
-                )
+                pre_cells = np.arange(low, high)
+                index = self._index_for(pre_cells, index)
+                found = find_appositions(index, pre_cells, threads)
                 with whole_file(self.path(block)) as partial, partial.open("wb") as out:
                     np.savez(out, **{name: getattr(found, name) for name in _NAMES})
                 progress.advance(high - low)
+
+    def _index_for(self, pre_cells, last: TargetIndex | None) -> TargetIndex:
+        """Index the targets that a block may reach, or use the last index again.
+
+        Sorting targets anew for every block costs more than a few idle ones in the
+        index, so all cells are indexed at once while they fit.
+        """
+        scene = self._circuit.scene
+        everyone = np.arange(self._circuit.cells.cells_n)
+        if self._targets_n(everyone) <= MOST_TARGETS_IN_INDEX:
+            return last or index_targets(scene, everyone)
+        near = reachable_cells(scene, pre_cells)
+        if last is not None and np.isin(near, last.cells).all():
+            return last
+        return index_targets(scene, near)
+
+    def _targets_n(self, cells: np.ndarray) -> int:
+        scene = self._circuit.scene
+        counts = sum(np.diff(layer.first) for layer in scene.targets)
+        return int(counts[scene.placed.arbor[cells]].sum())
 
     def load(self, block: int) -> Appositions:
         """Read the sites of a block."""
