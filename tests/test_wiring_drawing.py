@@ -123,6 +123,21 @@ def test_draws_depend_on_the_pair_alone(monkeypatch):
     assert (draw_synapses(4, pre, post, a, pathway, tables) != whole).any()
 
 
+def test_both_cells_of_a_pair_and_their_order_key_its_draw():
+    """The two directions are independent: chi-square on a two by two table."""
+    pre, post = np.triu_indices(120, 1)
+    n, law = pre.size, Law(0.0, -1.0)
+    one, tables = np.ones(n, int), _tables([law], 1)
+    forth = draw_synapses(3, pre, post, one, one * 0, tables)
+    back = draw_synapses(3, post, pre, one, one * 0, tables)
+    p = size_distribution(1, law)[1]
+    expected = n * np.array([(1 - p) ** 2, p * (1 - p), p * (1 - p), p * p])
+    assert chisquare(np.bincount(2 * forth + back), expected).pvalue > FALSE_ALARM
+    # 119 pairs share a cell; all alike would have probability below 1e-16.
+    assert 0 < forth[pre == 0].mean() < 1
+    assert 0 < forth[post == 119].mean() < 1
+
+
 def test_chosen_sites_depend_on_the_pair_alone():
     pre, post, a, pathway = _pairs(2000, 11, 4)
     synapses = draw_synapses(3, pre, post, a, pathway, _tables(LAWS, 11))
