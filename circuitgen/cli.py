@@ -111,13 +111,15 @@ def add_grow_command(commands) -> None:
     parser.add_argument(
         "--count", type=_at_least_one, metavar="N", help="default: one per soma depth"
     )
-    parser.add_argument("--seed", type=_not_negative, metavar="S")
+    parser.add_argument(
+        "--seed", type=_not_negative, default=1, metavar="S", help="default: 1"
+    )
     parser.set_defaults(run=run_grow)
 
 
 def _whole_number(text: str, least: int) -> int:
     value = int(text) if text.strip().lstrip("+-").isdigit() else least - 1
-    if not least <= value < 2**63:
+    if not least <= value < 2**64:
         raise argparse.ArgumentTypeError(f"{text!r} must be a whole number >= {least}")
     return value
 

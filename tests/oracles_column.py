@@ -8,13 +8,13 @@ import numpy as np
 from builders import arbor_from_segments
 
 from circuitgen.morphology.arbor import Kind
-from circuitgen.spec import PlacedCellType, Spec
+from circuitgen.spec import CellType, Spec
 from circuitgen.spec.models import AppositionRules, ColumnSpec, Conduction, Layer
 
 
 def make_type(name="one", *, radius=0.5, count=None, density=None):
     """Make a cell type without reconstruction files."""
-    return PlacedCellType(
+    return CellType(
         name=name,
         sign="excitatory",
         density_per_mm3=density or {},
@@ -40,7 +40,6 @@ def make_spec(
         name="made",
         seed=seed,
         column=ColumnSpec(**column),
-        mesh_file=mesh,
         layers=tuple(Layer(name=name, thickness_um=size) for name, size in layers),
         cell_types=types,
         groups={},

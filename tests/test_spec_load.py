@@ -1,380 +1,358 @@
-"""Loading a spec: one mistake each, many at once, and what a valid spec gives."""
+"""A spec file: what it becomes, and every way in which it can be wrong."""
 
-import time
+from __future__ import annotations
+
+import os
+import pickle
+from dataclasses import FrozenInstanceError
 
 import pytest
+from builders_spec import (
+    RECORDINGS,
+    SPEC,
+    edited,
+    line_of,
+    load,
+    problems,
+    write_spec,
+)
 
 from circuitgen.core.errors import InputError
 from circuitgen.spec import load_spec
 
-SPEC = """\
-name: small
-seed: 5
-column:
-  shape: box
-  width_um: 100
-  length_um: 80
-  edges: wrap
-layers:
-- {name: upper, thickness_um: 100}
-- name: lower
-  thickness_um: 200.5
-cell_types:
-  stellate:
-    sign: excitatory
-    density_per_mm3: {upper: 5e4}
-    morphologies: cells/stellate_*.swc
-    targets: [basal, apical]
-  basket:
-    sign: inhibitory
-    count:
-      upper: 4
-      lower: 7
-    morphologies: [cells/basket.swc]
-    upright: -z
-    soma_radius_um: 6
-    ais_um: 30
-groups:
-  all_cells: [stellate, basket]
-appositions: {max_gap_um: 0.25}
-recordings: recordings.csv
-conduction: {axon_um_per_ms: 250}
-"""
-SWC = "1 1 0 0 0 5 -1\n2 2 0 -40 0 0.3 1\n3 3 0 40 0 0.5 1\n"
-CSV = """\
-source,pre_type,post_type,tested_n,connected_n
-invented,stellate,basket,20,5
-invented,all_cells,stellate,30,3
-"""
 
-
-@pytest.fixture
-def folder(tmp_path):
-    """Return a folder with a small valid spec and everything that it names."""
-    (tmp_path / "cells").mkdir()
-    for name in ("stellate_1", "stellate_2", "basket"):
-        (tmp_path / "cells" / f"{name}.swc").write_text(SWC)
-    (tmp_path / "spec.yaml").write_text(SPEC)
-    (tmp_path / "recordings.csv").write_text(CSV)
-    return tmp_path
-
-
-def changed(folder, old, new):
-    """Replace text that stands once in the valid spec; return the spec's path."""
-    assert SPEC.count(old) == 1
-    path = folder / "spec.yaml"
-    path.write_text(SPEC.replace(old, new))
-    return path
-
-
-def problems_of(path):
-    with pytest.raises(InputError) as caught:
-        load_spec(path)
-    return caught.value.problems
-
-
-def test_a_valid_spec_loads_as_written(folder):
-    spec = load_spec(folder / "spec.yaml")
-    assert (spec.name, spec.seed, spec.text) == ("small", 5, SPEC)
-    assert spec.thickness_um == 300.5
-    assert spec.layer_bounds_um == ((200.5, 300.5), (0.0, 200.5))
-    assert spec.type_names == ("stellate", "basket")
-    assert spec.members("all_cells") == (0, 1)
-    assert spec.members("basket") == (1,)
-    stellate, basket = spec.cell_types
-    assert stellate.is_excitatory
-    assert not basket.is_excitatory
-    assert stellate.density_per_mm3 == {"upper": 50_000.0}
-    assert basket.count == {"upper": 4, "lower": 7}
-    assert [f.name for f in stellate.morphologies] == [
-        "stellate_1.swc",
-        "stellate_2.swc",
+def test_good_spec(tmp_path):
+    spec = load(tmp_path)
+    assert (spec.name, spec.seed) == ("harbour-patch", 7)
+    assert (spec.column.shape, spec.column.diameter_um) == ("cylinder", 300)
+    assert spec.column.edges == "open"
+    assert [(layer.name, layer.thickness_um) for layer in spec.layers] == [
+        ("L1", 120),
+        ("L23", 300),
     ]
-    assert (stellate.upright, basket.upright) == ("y", "-z")
-    assert (stellate.ais_um, basket.ais_um) == (40.0, 30.0)
-    assert (stellate.soma_radius_um, basket.soma_radius_um) == (None, 6.0)
-    assert basket.targets == ("soma", "basal", "apical")
-    assert spec.appositions.max_gap_um == 0.25
-    assert spec.appositions.min_spacing_um == 4.0
-    assert (spec.conduction.axon_um_per_ms, spec.conduction.synaptic_delay_ms) == (
-        250.0,
-        0.5,
+    assert spec.thickness_um == 420
+    assert spec.layer_bounds_um == ((300, 420), (0, 300))
+    pyramidal, basket = spec.cell_types
+    assert spec.type_names == ("L23_pyramidal", "L23_basket")
+    assert (pyramidal.name, pyramidal.sign) == ("L23_pyramidal", "excitatory")
+    assert (pyramidal.is_excitatory, basket.is_excitatory) == (True, False)
+    assert (pyramidal.density_per_mm3, pyramidal.count) == ({"L23": 60000}, {})
+    assert (basket.density_per_mm3, basket.count) == ({}, {"L1": 5, "L23": 40})
+    assert pyramidal.morphologies == tuple(
+        tmp_path / "arbors" / f"L23_pyramidal_{n}.swc" for n in (1, 2)
     )
-    assert [r.row for r in spec.recordings] == [1, 2]
-    assert [r.line for r in spec.recordings] == [2, 3]
-    names = ["basket.swc", "stellate_1.swc", "stellate_2.swc", "recordings.csv"]
-    assert sorted(f.name for f in spec.input_files) == sorted(names)
+    assert basket.morphologies == tuple(
+        tmp_path / "arbors" / f"L23_basket_{n}.swc" for n in (1, 2)
+    )
+    assert (pyramidal.upright, pyramidal.soma_radius_um) == ("y", 7)
+    assert (basket.upright, basket.soma_radius_um, basket.ais_um) == ("y", None, 30)
+    assert pyramidal.targets == basket.targets == ("soma", "basal", "apical")
+    assert spec.groups == {"L23_all": ("L23_pyramidal", "L23_basket")}
+    assert spec.appositions.max_gap_um == 0.5
+    assert spec.appositions.min_spacing_um == 4
+    assert spec.appositions.autapses is False
+    assert spec.conduction.axon_um_per_ms == 300
+    assert spec.conduction.synaptic_delay_ms == 0.5
+    assert len(spec.recordings) == 2
+    assert spec.path == tmp_path / "spec.yaml"
+    assert spec.text == SPEC
+    assert spec.input_files == tuple(
+        sorted(
+            [
+                *pyramidal.morphologies,
+                *basket.morphologies,
+                tmp_path / "recordings.csv",
+            ]
+        )
+    )
 
 
-# old text, new text: line, field, words of the rule, nearest name
-MISTAKES = {
-    # Keys.
-    ("seed: 5", "seed: 5\nsed: 6"): (3, "sed", "is not a known key", "seed"),
-    ("  edges: wrap", "  egdes: wrap"): (
-        7,
-        "column.egdes",
-        "is not a known key",
-        "edges",
-    ),
-    ("    ais_um: 30", "    aiss_um: 30"): (
-        26,
-        "cell_types.basket.aiss_um",
-        "is not a known key",
-        "ais_um",
-    ),
-    ("upper, thickness_um", "upper, hue: 1, thickness_um"): (
-        9,
-        "layers.0.hue",
-        "is not a known key",
-        None,
-    ),
-    ("seed: 5\n", "seed: 5\nseed: 6\n"): (3, "seed", "is given twice", None),
-    ("  basket:", "  stellate:"): (
-        18,
-        "cell_types.stellate",
-        "(first on line 13)",
-        None,
-    ),
-    ("name: small\n", ""): (1, "name", "is missing", None),
-    ("seed: 5\n", ""): (1, "seed", "is missing", None),
-    ("  shape: box\n", ""): (3, "column.shape", "is missing", None),
-    ("  thickness_um: 200.5\n", ""): (10, "layers.1.thickness_um", "is missing", None),
-    ("    sign: inhibitory\n", ""): (18, "cell_types.basket.sign", "is missing", None),
-    ("    morphologies: cells/stellate_*.swc\n", ""): (
-        13,
-        "cell_types.stellate.morphologies",
-        "is missing",
-        None,
-    ),
-    # Values of the wrong type.
-    ("seed: 5", "seed: five"): (2, "seed", "= 'five' must be a whole number", None),
-    ("seed: 5", "seed: 5.5"): (2, "seed", "= 5.5 must be a whole number", None),
-    ("seed: 5", "seed: true"): (2, "seed", "= True must be a whole number", None),
-    ("seed: 5", "seed: -5"): (2, "seed", "= -5 must be >= 0", None),
-    ("seed: 5", f"seed: {2**64}"): (2, "seed", "must be < 1.84467e+19", None),
-    ("name: small", "name: 12"): (1, "name", "= 12 must be text", None),
-    ("name: small", "name: ''"): (1, "name", "must not be empty", None),
-    ("name: small", f"name: {'x' * 81}"): (1, "name", "80 characters at most", None),
-    ("upper: 4", "upper: 4.5"): (
-        21,
-        "cell_types.basket.count.upper",
-        "= 4.5 must be a whole number",
-        None,
-    ),
-    ("200.5", "'200.5'"): (
-        11,
+def test_members(tmp_path):
+    spec = load(tmp_path)
+    assert spec.members("L23_basket") == (1,)
+    assert spec.members("L23_all") == (0, 1)
+    with pytest.raises(KeyError):
+        spec.members("L23_al")
+
+
+def test_a_spec_is_frozen_and_can_be_sent_to_workers(tmp_path):
+    spec = load(tmp_path)
+    with pytest.raises(FrozenInstanceError):
+        spec.seed = 8
+    with pytest.raises(ValueError, match="frozen"):
+        spec.cell_types[0].sign = "inhibitory"
+    with pytest.raises(ValueError, match="frozen"):
+        spec.recordings[0].tested_n = 8
+    assert pickle.loads(pickle.dumps(spec)) == spec
+
+
+def test_only_the_required_keys(tmp_path):
+    text = SPEC[: SPEC.index("groups:")]
+    for passage in ("  edges: open\n", "    soma_radius_um: 7\n", "    upright: y\n"):
+        text = edited(text, passage, "")
+    spec = load(tmp_path, text)
+    assert spec.column.edges == "open"
+    assert spec.cell_types[0].soma_radius_um is None
+    assert spec.cell_types[0].ais_um == 40
+    assert (spec.groups, spec.recordings) == ({}, ())
+    assert (spec.appositions.max_gap_um, spec.appositions.min_spacing_um) == (0.5, 4)
+    assert spec.conduction.axon_um_per_ms == 300
+
+
+@pytest.mark.parametrize(
+    "passage", ["  L23_all: [L23_pyramidal, L23_basket]\n", " recordings.csv"]
+)
+def test_a_key_without_a_value_counts_as_absent(tmp_path, passage):
+    recordings = edited(RECORDINGS, "L23_all", "L23_basket")
+    spec = load(tmp_path, edited(SPEC, passage, ""), recordings)
+    assert spec.groups == {} or spec.recordings == ()
+
+
+@pytest.mark.parametrize(
+    ("shape", "attributes"),
+    [
+        ("{shape: hexagon, across_flats_um: 80}", {"across_flats_um": 80}),
+        (
+            "{shape: box, width_um: 80, length_um: 90, edges: wrap}",
+            {"width_um": 80, "length_um": 90, "edges": "wrap"},
+        ),
+    ],
+)
+def test_shapes(tmp_path, shape, attributes):
+    column = load(tmp_path, with_column(shape)).column
+    for name, value in attributes.items():
+        assert getattr(column, name) == value
+    assert column.diameter_um is None
+
+
+def with_column(shape: str) -> str:
+    passage = "column:\n  shape: cylinder\n  diameter_um: 300\n  edges: open\n"
+    return edited(SPEC, passage, f"column: {shape}\n")
+
+
+def test_mesh(tmp_path):
+    (tmp_path / "piece.STL").touch()
+    spec = load(tmp_path, with_column("{shape: mesh, file: piece.STL}"))
+    assert spec.column.file == tmp_path / "piece.STL"
+    assert spec.column.file in spec.input_files
+
+
+def test_mesh_that_is_absent(tmp_path):
+    (tmp_path / "piece.stl").touch()
+    (problem,) = problems(tmp_path, with_column("{shape: mesh, file: peice.stl}"))
+    assert (problem.line, problem.field) == (3, "column.file")
+    assert problem.nearest == "piece.stl"
+    assert str(tmp_path) in problem.rule
+
+
+def test_mesh_of_another_kind(tmp_path):
+    (tmp_path / "piece.dxf").touch()
+    (problem,) = problems(tmp_path, with_column("{shape: mesh, file: piece.dxf}"))
+    assert (problem.line, problem.field) == (3, "column.file")
+    assert ".stl, .obj, .ply, .glb" in problem.rule
+
+
+@pytest.mark.parametrize(
+    ("shape", "faults"),
+    [
+        ("{shape: cylinder}", [("diameter_um", "is missing; shape cylinder needs it")]),
+        (
+            "{shape: cylinder, width_um: 3}",
+            [
+                ("diameter_um", "is missing; shape cylinder needs it"),
+                ("width_um", "does not belong to shape cylinder"),
+            ],
+        ),
+        (
+            "{shape: box, width_um: 3, edges: wrap}",
+            [("length_um", "is missing; shape box needs it")],
+        ),
+        (
+            "{shape: hexagon, across_flats_um: 3, edges: wrap}",
+            [("edges", "= 'wrap' needs shape box, not hexagon")],
+        ),
+        (
+            "{shape: mesh, diameter_um: -3, file: }",
+            [
+                ("file", "is missing; shape mesh needs it"),
+                ("diameter_um", "does not belong to shape mesh"),
+                ("diameter_um", "= -3 must be > 0"),
+            ],
+        ),
+        (
+            "{shape: cilinder, diameter_um: 3}",
+            [("shape", "= 'cilinder' must be one of cylinder, hexagon, box, mesh")],
+        ),
+        ("{shape: [box]}", [("shape", "must be one of cylinder")]),
+        (
+            "{shape: cylinder, diameter_um: 3, edges: wrapped}",
+            [("edges", "= 'wrapped' must be one of open, wrap")],
+        ),
+        ("cylinder", [("", "= 'cylinder' must be 'key: value' lines")]),
+    ],
+)
+def test_shapes_that_are_wrong(tmp_path, shape, faults):
+    found = problems(tmp_path, with_column(shape))
+    assert {problem.line for problem in found} == {3}
+    assert len(found) == len(faults)
+    for field, rule in faults:
+        field = ".".join(filter(None, ["column", field]))
+        assert any(field == one.field and rule in one.rule for one in found), found
+
+
+@pytest.mark.parametrize("key", ["name", "seed", "column", "layers", "cell_types"])
+@pytest.mark.parametrize("blank", [False, True])
+def test_missing_parts(tmp_path, key, blank):
+    lines = SPEC.splitlines(keepends=True)
+    begin = next(i for i, line in enumerate(lines) if line.startswith(f"{key}:"))
+    end = begin + 1
+    while lines[end].startswith(" "):
+        end += 1
+    kept = [*lines[:begin], *([f"{key}:\n"] if blank else []), *lines[end:]]
+    found = problems(tmp_path, "".join(kept))
+    (problem,) = (one for one in found if one.field == key)
+    assert problem.rule == "is missing"
+    assert problem.line == (begin + 1 if blank else 1)
+    # The rest of the spec is not blamed for it.
+    assert all(one.field in (key, "") for one in found)
+
+
+@pytest.mark.parametrize(
+    "pattern",
+    [
+        "arbors/*.txt",
+        "",
+        ".",
+        "arbors",
+        "/",
+        "**",
+        "arbors/[",
+        '"arbors/\\0.swc"',
+        "x" * 5000,
+        "x" * 300 + "/cell.swc",
+        "../" * 100 + "none.swc",
+    ],
+)
+def test_patterns_that_find_nothing(tmp_path, pattern):
+    text = edited(SPEC, "arbors/L23_pyramidal_*.swc", pattern or "''")
+    if pattern == "**":
+        text = edited(text, "**", "'arbors/**/'")
+    found = problems(tmp_path, text)
+    assert len(found) == 1, found
+    assert found[0].field == "cell_types.L23_pyramidal.morphologies"
+    assert found[0].line == line_of(text, "sign: excitatory") + 2
+    assert "finds no file" in found[0].rule
+    assert len(found[0].rule) < 9000
+
+
+def test_pattern_problem_names_folder_and_nearest_file(tmp_path):
+    text = edited(SPEC, "arbors/L23_pyramidal_*.swc", "arbors/L23_pyramid_1.swc")
+    (problem,) = problems(tmp_path, text)
+    assert f"in the folder {tmp_path / 'arbors'}" in problem.rule
+    assert problem.nearest == "arbors/L23_pyramidal_1.swc"
+
+
+def test_absolute_and_recursive_patterns(tmp_path):
+    text = edited(SPEC, "arbors/L23_pyramidal_*.swc", f"{tmp_path}/**/*_1.swc")
+    files = load(tmp_path, text).cell_types[0].morphologies
+    # A hidden file is not found by a star.
+    assert [file.name for file in files] == ["L23_basket_1.swc", "L23_pyramidal_1.swc"]
+
+
+def test_a_file_named_like_a_pattern_is_found_by_its_name(tmp_path):
+    (tmp_path / "cell[1].swc").touch()
+    text = edited(SPEC, "arbors/L23_pyramidal_*.swc", '"cell[1].swc"')
+    files = load(tmp_path, text).cell_types[0].morphologies
+    assert [file.name for file in files] == ["cell[1].swc"]
+
+
+def test_links_keep_their_own_name(tmp_path):
+    write_spec(tmp_path)
+    store = tmp_path / "store"
+    store.mkdir()
+    (store / "8a1f").touch()
+    (tmp_path / "arbors" / "L23_pyramidal_3.swc").symlink_to(store / "8a1f")
+    files = load_spec(tmp_path / "spec.yaml").cell_types[0].morphologies
+    assert [file.name for file in files] == [f"L23_pyramidal_{n}.swc" for n in (1, 2, 3)]
+
+
+def test_paths_count_from_the_spec_whatever_the_working_folder(tmp_path, monkeypatch):
+    home = tmp_path / "deep" / "home"
+    text = edited(SPEC, "arbors/L23_pyramidal_*.swc", "../../far/L23_pyramidal_*.swc")
+    write_spec(home, text)
+    (tmp_path / "far").mkdir()
+    (tmp_path / "far" / "L23_pyramidal_9.swc").touch()
+    whole = load_spec(home / "spec.yaml")
+    for folder in (tmp_path, home, tmp_path / "far"):
+        monkeypatch.chdir(folder)
+        spec = load_spec(os.path.relpath(home / "spec.yaml"))
+        assert spec.cell_types == whole.cell_types
+        assert (spec.path, spec.input_files) == (whole.path, whole.input_files)
+        assert [one.tested_n for one in spec.recordings] == [50, 30]
+    assert whole.cell_types[0].morphologies == (tmp_path / "far/L23_pyramidal_9.swc",)
+
+
+def test_problems_name_files_as_the_user_did(tmp_path, monkeypatch):
+    write_spec(
+        tmp_path / "home",
+        edited(SPEC, "seed: 7", "seed: x"),
+        edited(RECORDINGS, "50,4", "50,z"),
+    )
+    monkeypatch.chdir(tmp_path)
+    with pytest.raises(InputError) as caught:
+        load_spec("home/spec.yaml")
+    assert str(caught.value) == (
+        "home/recordings.csv:2: connected_n = 'z' must be a whole number\n"
+        "home/spec.yaml:2: seed = 'x' must be a whole number"
+    )
+
+
+def test_spec_and_recordings_are_reported_together_in_order(tmp_path):
+    text = SPEC
+    for old, new in (
+        ("seed: 7", "seed: x"),
+        ("thickness_um: 300", "thickness_um: -300"),
+        ("sign: inhibitory", "sign: inhib"),
+        ("L1: 5", "L4: 5"),
+        ("[L23_pyramidal, L23_basket]", "[L23_pyramidal, basket]"),
+        ("max_gap_um", "max_gap_nm"),
+        ("arbors/L23_basket_1.swc", "arbors/none.swc"),
+    ):
+        text = edited(text, old, new)
+    recordings = edited(RECORDINGS, "50,4", "50,51") + "x,L23_pyr,L23_al,1,1,9,2,fit\n"
+    found = problems(tmp_path, text, recordings)
+    table, spec = str(tmp_path / "recordings.csv"), str(tmp_path / "spec.yaml")
+    places = [(one.file, one.line, one.field) for one in found]
+    assert places == [
+        (table, 2, "connected_n"),
+        (table, 4, "distance_low_um"),
+        (table, 4, "pre_type"),
+        (table, 4, "post_type"),
+        (spec, 2, "seed"),
+        (spec, 10, "layers.2.thickness_um"),
+        (spec, 20, "cell_types.L23_basket.sign"),
+        (spec, 22, "cell_types.L23_basket.count.L4"),
+        (spec, 24, "cell_types.L23_basket.morphologies.1"),
+        (spec, 27, "groups.L23_all.2"),
+        (spec, 28, "appositions.max_gap_nm"),
+    ]
+    assert found[2].nearest == "L23_pyramidal"
+    assert found[3].nearest == "L23_all"
+
+
+def test_a_list_whose_only_entry_is_wrong_is_not_called_empty(tmp_path):
+    text = edited(SPEC, "  - name: L23\n    thickness_um: 300\n", "")
+    text = edited(text, "thickness_um: 120", "thickness_um: 0")
+    text = edited(text, "{L23: 60000}", "{L1: -1}")
+    text = edited(text, "      L23: 40\n", "")
+    text = edited(text, "[soma, basal, apical]", "[spine]")
+    assert [one.field for one in problems(tmp_path, text)] == [
         "layers.1.thickness_um",
-        "= '200.5' must be a number",
-        None,
-    ),
-    ("200.5", "[200.5]"): (11, "layers.1.thickness_um", "must be a number", None),
-    ("200.5", ""): (11, "layers.1.thickness_um", "= nothing must be a number", None),
-    ("all_cells: [stellate, basket]", "all_cells: {stellate: 1}"): (
-        28,
-        "groups.all_cells",
-        "must be a list",
-        None,
-    ),
-    ("{max_gap_um: 0.25}", "0.25"): (29, "appositions", "'key: value' lines", None),
-    ("recordings: recordings.csv", "recordings: 3"): (
-        30,
-        "recordings",
-        "= 3 must be text or a list",
-        None,
-    ),
-    ("recordings: recordings.csv", "recordings: [3]"): (
-        30,
-        "recordings.0",
-        "= 3 must be a group of 'key: value' lines",
-        None,
-    ),
-    ("[cells/basket.swc]", "[cells/basket.swc, 3]"): (
-        23,
-        "cell_types.basket.morphologies.1",
-        "= 3 must be text",
-        None,
-    ),
-    # Numbers out of range.
-    ("200.5", "-200.5"): (11, "layers.1.thickness_um", "= -200.5 must be > 0", None),
-    ("200.5", "0"): (11, "layers.1.thickness_um", "= 0 must be > 0", None),
-    ("200.5", ".nan"): (11, "layers.1.thickness_um", "a finite number", None),
-    ("200.5", ".inf"): (11, "layers.1.thickness_um", "a finite number", None),
-    ("5e4", "-1"): (
-        15,
-        "cell_types.stellate.density_per_mm3.upper",
-        "= -1 must be >= 0",
-        None,
-    ),
-    ("5e4", "1e999"): (
-        15,
-        "cell_types.stellate.density_per_mm3.upper",
-        "a finite number",
-        None,
-    ),
-    ("lower: 7", "lower: -7"): (
-        22,
-        "cell_types.basket.count.lower",
-        "= -7 must be >= 0",
-        None,
-    ),
-    ("0.25", "51"): (29, "appositions.max_gap_um", "= 51 must be <= 50", None),
-    ("250", "0"): (31, "conduction.axon_um_per_ms", "= 0 must be > 0", None),
-    # Names.
-    ("sign: inhibitory", "sign: inhibitry"): (
-        19,
-        "cell_types.basket.sign",
-        "must be one of excitatory, inhibitory",
-        "inhibitory",
-    ),
-    ("[basal, apical]", "[basal, apicle]"): (
-        17,
-        "cell_types.stellate.targets.1",
-        "must be one of soma, axon_initial_segment, basal, apical",
-        "apical",
-    ),
-    ("[basal, apical]", "[basal, basal]"): (
-        13,
-        "cell_types.stellate",
-        "targets must name each target once",
-        None,
-    ),
-    ("[basal, apical]", "[]"): (
-        13,
-        "cell_types.stellate",
-        "targets must name each target once, and at least one",
-        None,
-    ),
-    ("upright: -z", "upright: w"): (
-        24,
-        "cell_types.basket.upright",
-        "must be one of x, y, z, -x, -y, -z",
-        None,
-    ),
-    ("{upper: 5e4}", "{uper: 5e4}"): (
-        15,
-        "cell_types.stellate.density_per_mm3.uper",
-        "is no layer",
-        "upper",
-    ),
-    ("lower: 7", "lowest: 7"): (
-        22,
-        "cell_types.basket.count.lowest",
-        "is no layer",
-        "lower",
-    ),
-    ("[stellate, basket]", "[stellate, baskett]"): (
-        28,
-        "groups.all_cells.1",
-        "= 'baskett' is no cell type",
-        "basket",
-    ),
-    ("[stellate, basket]", "[stellate, stellate]"): (
-        28,
-        "groups.all_cells.1",
-        "= 'stellate' is named twice",
-        None,
-    ),
-    ("[stellate, basket]", "[]"): (28, "groups.all_cells", "names no cell type", None),
-    ("groups:\n", "groups:\n  basket: [stellate]\n"): (
-        28,
-        "groups.basket",
-        "is also the name of a cell type",
-        None,
-    ),
-    # Files.
-    ("cells/stellate_*.swc", "cells/stelate_*.swc"): (
-        16,
-        "cell_types.stellate.morphologies",
-        "= 'cells/stelate_*.swc' finds no file",
-        "cells/stellate_2.swc",
-    ),
-    ("[cells/basket.swc]", "[cells/basket.swc, cells/baskets.swc]"): (
-        23,
-        "cell_types.basket.morphologies",
-        "= 'cells/baskets.swc' finds no file",
-        "cells/basket.swc",
-    ),
-    ("[cells/basket.swc]", "[]"): (
-        23,
-        "cell_types.basket.morphologies",
-        "names no file",
-        None,
-    ),
-    ("[cells/basket.swc]", "''"): (
-        23,
-        "cell_types.basket.morphologies",
-        "finds no file",
-        None,
-    ),
-    ("[cells/basket.swc]", "cells"): (
-        23,
-        "cell_types.basket.morphologies",
-        "= 'cells' finds no file",
-        None,
-    ),
-    ("recordings: recordings.csv", "recordings: recording.csv"): (
-        30,
-        "recordings",
-        "= 'recording.csv' is no file",
-        "recordings.csv",
-    ),
-    ("recordings: recordings.csv", "recordings: cells"): (
-        30,
-        "recordings",
-        "= 'cells' is no file",
-        None,
-    ),
-    # Rules between fields.
-    ("    density_per_mm3: {upper: 5e4}\n", ""): (
-        13,
-        "cell_types.stellate",
-        "needs density_per_mm3 or count, one of the two",
-        None,
-    ),
-    ("{upper: 5e4}\n", "{upper: 5e4}\n    count: {upper: 3}\n"): (
-        13,
-        "cell_types.stellate",
-        "needs density_per_mm3 or count, one of the two",
-        None,
-    ),
-    (
-        "shape: box\n  width_um: 100\n  length_um: 80\n",
-        "shape: hexagon\n  across_flats_um: 90\n",
-    ): (
-        3,
-        "column",
-        "edges: wrap needs shape: box",
-        None,
-    ),
-    ("  length_um: 80\n", ""): (3, "column", "of shape box needs length_um", None),
-    ("length_um: 80", "length_um: 80\n  diameter_um: 9"): (
-        3,
-        "column",
-        "of shape box has no diameter_um",
-        None,
-    ),
-    ("width_um: 100\n  length_um: 80", "file: recordings.csv"): (
-        3,
-        "column",
-        "of shape box needs width_um",
-        None,
-    ),
-    # The file itself.
-    ("sign: inhibitory", "sign: !!python/name:os.system ''"): (
-        19,
-        "cell_types.basket.sign",
-        "plain values only",
-        None,
-    ),
-    ("  width_um: 100", "\twidth_um: 100"): (5, "", "is not valid YAML", None),
-}
+        "cell_types.L23_pyramidal.density_per_mm3.L1",
+        "cell_types.L23_pyramidal.targets.1",
+    ]
 
 
-@pytest.mark.parametrize("change", MISTAKES, ids=lambda c: ascii(c[1])[:40])
-def test_one_mistake_gives_one_problem_with_its_place(folder, change):
-    line, field, words, nearest = MISTAKES[change]
-    path = changed(folder, *change)
-    (problem,) = problems_of(path)
-    assert (problem.file, problem.line, problem.field) == (str(path), line, field)
-    assert words in problem.rule
-    assert problem.nearest == nearest
+def test_a_wrong_type_is_not_blamed_twice(tmp_path):
+    text = edited(SPEC, "sign: excitatory", "sign: 3")
+    assert len(problems(tmp_path, text)) == 1

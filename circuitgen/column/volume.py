@@ -155,7 +155,7 @@ def make_volume(spec: Spec) -> Volume:
     """Return the volume that a spec describes."""
     column, thickness = spec.column, spec.thickness_um
     if column.shape == "mesh":
-        return read_mesh(spec.mesh_file, thickness)
+        return read_mesh(spec.column.file, thickness)
     if column.shape == "box":
         sides = (column.width_um, column.length_um)
         wrap = sides if column.edges == "wrap" else (0.0, 0.0)

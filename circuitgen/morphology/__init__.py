@@ -2,13 +2,13 @@
 
 from circuitgen.morphology.arbor import Arbor, Kind
 from circuitgen.morphology.build import build_arbor
-from circuitgen.morphology.growth import grow_files
+from circuitgen.morphology.describe import read_description
+from circuitgen.morphology.growth import grow, grow_files
 from circuitgen.morphology.reconstruction import (
     Finding,
     Reconstruction,
     read_reconstruction,
 )
-from circuitgen.morphology.swc import write_swc
 
 __all__ = [
     "Arbor",
@@ -16,7 +16,8 @@ __all__ = [
     "Kind",
     "Reconstruction",
     "build_arbor",
+    "grow",
     "grow_files",
+    "read_description",
     "read_reconstruction",
-    "write_swc",
 ]

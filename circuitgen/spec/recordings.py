@@ -3,216 +3,327 @@
 from __future__ import annotations
 
 import csv
-from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+import io
+import math
+import re
+from collections.abc import Iterator
+from functools import lru_cache
 from pathlib import Path
 from typing import Annotated, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
+from pydantic import Field
 
-from circuitgen.core.errors import InputError, Problem, nearest_name
-from circuitgen.spec.document import RuleError, describe_error, read_text
+from circuitgen.core.errors import InputError, Problem
+from circuitgen.spec.document import Document, read_text
+from circuitgen.spec.fields import LengthUm, PositionUm
+from circuitgen.spec.validation import (
+    Fault,
+    Part,
+    RuleError,
+    shown,
+    unknown_name,
+    validate,
+)
 
-_Count = Annotated[int, Field(ge=0)]
-_Share = Annotated[float, Field(ge=0, le=1, allow_inf_nan=False)]
-_Size = Annotated[float, Field(ge=0, allow_inf_nan=False)]
+MOST_PAIRS = 10**9
+MOST_SYNAPSES = 10**6
+
+_Count = Annotated[int, Field(ge=0, le=MOST_PAIRS)]
+_Sample = Annotated[int, Field(ge=1, le=MOST_PAIRS)]
+
+_BOTH_OR_NEITHER = (
+    ("tested_n", "connected_n"),
+    ("reciprocal_tested_n", "reciprocal_connected_n"),
+    ("soma_depth_low_um", "soma_depth_high_um"),
+)
+_NEEDS = (
+    ("synapses_sd", "synapses_mean"),
+    ("synapses_pairs_n", "synapses_mean"),
+    ("soma_depth_low_um", "slice_thickness_um"),
+)
+_NOT_ABOVE = (
+    ("connected_n", "tested_n"),
+    ("reciprocal_connected_n", "reciprocal_tested_n"),
+    ("soma_depth_low_um", "soma_depth_high_um"),
+    ("soma_depth_high_um", "slice_thickness_um"),
+)
+_MEASUREMENTS = (
+    "tested_n",
+    "connected_n",
+    "probability",
+    "synapses_mean",
+    "synapses_sd",
+    "synapses_pairs_n",
+    "reciprocal_tested_n",
+    "reciprocal_connected_n",
+)
 
 
-def _together(row: Recording, names: Iterable[str]) -> None:
-    given = [name for name in names if getattr(row, name) is not None]
-    missing = [name for name in names if getattr(row, name) is None]
-    if given and missing:
-        raise RuleError(f"has {given[0]} but no {missing[0]}; both or neither")
-
-
-def _ordered(row: Recording, low: str, high: str, *, equal: bool) -> None:
-    a, b = getattr(row, low), getattr(row, high)
-    if a is not None and b is not None and (a > b or (a == b and not equal)):
-        raise RuleError(f"{low} = {a:g} must be below {high} = {b:g}")
-
-
-class Recording(BaseModel):
-    """One row: an experiment on ordered pairs of one type (or group) with another.
-
-    Units are in the names; None where the row says nothing. `row` counts data rows
-    from 1; `line` is the line in the file that holds the row.
-    """
-
-    model_config = ConfigDict(extra="forbid", frozen=True)
+class RecordingRow(Part):
+    """The columns of a recording; None where the row is blank, units in the names."""
 
     source: str = ""
     pre_type: str
     post_type: str
-    tested_n: Annotated[int, Field(ge=1)] | None = None
+    tested_n: _Sample | None = None
     connected_n: _Count | None = None
-    probability: _Share | None = None
-    distance_low_um: _Size | None = None
-    distance_high_um: _Size | None = None
+    probability: Annotated[float, Field(ge=0, le=1)] | None = None
+    distance_low_um: PositionUm | None = None
+    distance_high_um: LengthUm | None = None
     distance_kind: Literal["soma", "lateral"] = "soma"
-    slice_thickness_um: Annotated[float, Field(gt=0)] | None = None
-    soma_depth_low_um: _Size | None = None
-    soma_depth_high_um: _Size | None = None
-    synapses_mean: Annotated[float, Field(ge=1, allow_inf_nan=False)] | None = None
-    synapses_sd: _Size | None = None
-    synapses_pairs_n: Annotated[int, Field(ge=1)] | None = None
-    reciprocal_tested_n: Annotated[int, Field(ge=1)] | None = None
+    slice_thickness_um: LengthUm | None = None
+    soma_depth_low_um: PositionUm | None = None
+    soma_depth_high_um: PositionUm | None = None
+    synapses_mean: Annotated[float, Field(ge=1, le=MOST_SYNAPSES)] | None = None
+    synapses_sd: Annotated[float, Field(ge=0, le=MOST_SYNAPSES)] | None = None
+    synapses_pairs_n: _Sample | None = None
+    reciprocal_tested_n: _Sample | None = None
     reciprocal_connected_n: _Count | None = None
     use: Literal["fit", "audit"] = "fit"
+
+    @classmethod
+    def rules(cls, given: dict) -> Iterator[RuleError]:
+        """Yield columns that miss their partner or contradict it, and empty rows."""
+        yield from _partner_rules(given)
+        yield from _order_rules(given)
+        yield from _synapse_rules(given)
+        counts = [name for name in ("tested_n", "connected_n") if name in given]
+        if counts and "probability" in given:
+            rule = f"is given beside {counts[0]}; keep the counts or the probability"
+            yield RuleError(rule, field="probability")
+        if not any(name in given for name in _MEASUREMENTS):
+            yield RuleError("measures nothing: give counts, a probability or synapses")
+
+
+class Recording(RecordingRow):
+    """An experiment on ordered pairs of one cell type or group with another.
+
+    Attributes
+    ----------
+    row : int
+        Data row, counted from 1; 0 for one that no file holds.
+    file : str
+        The file that holds it, as the user would name it: for messages, not for
+        tables, since it depends on where the command ran.
+    line : int or None
+        Its line in that file, counted from 1.
+    """
+
     row: int = 0
     file: str = ""
     line: int | None = None
 
-    @model_validator(mode="after")
-    def _rules_between_fields(self):
-        _together(self, ("tested_n", "connected_n"))
-        _together(self, ("reciprocal_tested_n", "reciprocal_connected_n"))
-        _together(self, ("soma_depth_low_um", "soma_depth_high_um"))
-        for low, high in (
-            ("connected_n", "tested_n"),
-            ("reciprocal_connected_n", "reciprocal_tested_n"),
-            ("soma_depth_low_um", "soma_depth_high_um"),
-            ("soma_depth_high_um", "slice_thickness_um"),
-        ):
-            _ordered(self, low, high, equal=True)
-        _ordered(self, "distance_low_um", "distance_high_um", equal=False)
-        if self.tested_n is not None and self.probability is not None:
-            raise RuleError("has counts and a probability; give one of the two")
-        if self.synapses_mean is None and self.synapses_sd is not None:
-            raise RuleError("has synapses_sd but no synapses_mean")
-        if self.synapses_mean is None and self.synapses_pairs_n is not None:
-            raise RuleError("has synapses_pairs_n but no synapses_mean")
-        if self.soma_depth_low_um is not None and self.slice_thickness_um is None:
-            raise RuleError("has a soma depth but no slice_thickness_um")
-        measured = (self.tested_n, self.probability, self.synapses_mean)
-        if (*measured, self.reciprocal_tested_n) == (None,) * 4:
-            raise RuleError("measures nothing: give counts, a probability or synapses")
-        return self
-
     @property
     def measured_probability(self) -> float | None:
-        """Connected share of the tested pairs, or the probability as given."""
+        """Connected share of the tested pairs, or the probability given; or None."""
         if self.tested_n is None:
             return self.probability
         return self.connected_n / self.tested_n
 
     def window_um(self) -> tuple[float, float]:
-        """Distance window, from 0 and to infinity where the row sets no bound."""
+        """Return the window of distances; 0 and infinity where the row has no bound."""
         high = self.distance_high_um
-        return self.distance_low_um or 0.0, float("inf") if high is None else high
+        return self.distance_low_um or 0.0, math.inf if high is None else high
 
 
-COLUMNS = tuple(n for n in Recording.model_fields if n not in ("row", "file", "line"))
+COLUMNS = tuple(RecordingRow.model_fields)
+_TEXT_COLUMNS = ("source", "pre_type", "post_type", "distance_kind", "use")
+_NUMBER = re.compile(r"[-+]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][-+]?[0-9]+)?")
 
 
-@dataclass(frozen=True)
-class _Raw:
-    """One row before it is checked, and where it stands."""
-
-    fields: Mapping[str, object]
-    row: int
-    file: str
-    line: int | None
-
-
-def _header_problems(path: Path, header: list[str]) -> list[Problem]:
-    problems = []
-    for name in header:
-        if name not in COLUMNS:
-            near = nearest_name(name, COLUMNS)
-            rule = f"column {name!r} is not known"
-            if ";" in name:
-                rule, near = "columns must be separated by commas, not semicolons", None
-            problems.append(Problem(str(path), 1, "", rule, near))
-        elif header.count(name) > 1:
-            problems.append(Problem(str(path), 1, name, "column is given twice"))
-    if not any(";" in name for name in header):
-        for name in ("pre_type", "post_type"):
-            if name not in header:
-                problems.append(Problem(str(path), 1, name, "column is missing"))
-    return list(dict.fromkeys(problems))
+def _numbers(given: dict, *names: str) -> tuple[float, ...] | None:
+    """Return the values of these columns if all of them are finite numbers."""
+    values = tuple(given.get(name) for name in names)
+    for value in values:
+        if isinstance(value, bool) or not isinstance(value, int | float):
+            return None
+        if not math.isfinite(value):
+            return None
+    return values
 
 
-def _csv_rows(path: Path) -> tuple[list[_Raw], list[Problem]]:
-    reader = csv.reader(read_text(path).splitlines())
-    header: list[str] | None = None
-    rows: list[_Raw] = []
-    problems: list[Problem] = []
-    for cells in reader:
-        values = [cell.strip() for cell in cells]
-        if not any(values) or values[0].startswith("#"):
+def _partner_rules(given: dict) -> Iterator[RuleError]:
+    both_ways = [*_BOTH_OR_NEITHER, *((b, a) for a, b in _BOTH_OR_NEITHER)]
+    for name, partner in (*both_ways, *_NEEDS):
+        if name in given and partner not in given:
+            yield RuleError(f"is missing; {name} needs it", field=partner)
+
+
+def _order_rules(given: dict) -> Iterator[RuleError]:
+    for low, high in _NOT_ABOVE:
+        pair = _numbers(given, low, high)
+        if pair and pair[0] > pair[1]:
+            rule = f"= {shown(pair[0])} must be <= {high} = {shown(pair[1])}"
+            yield RuleError(rule, field=low)
+    window = _numbers(given, "distance_low_um", "distance_high_um")
+    if window and window[0] >= window[1]:
+        rule = f"= {shown(window[0])} must be < distance_high_um = {shown(window[1])}"
+        yield RuleError(rule, field="distance_low_um")
+
+
+def _synapse_rules(given: dict) -> Iterator[RuleError]:
+    spread = _numbers(given, "synapses_mean", "synapses_sd")
+    if spread and spread[0] == 1 and spread[1] > 0:
+        rule = f"= {shown(spread[1])} must be 0 when synapses_mean is 1, the least"
+        yield RuleError(rule, field="synapses_sd")
+    pairs_n = _numbers(given, "synapses_pairs_n")
+    if pairs_n and pairs_n[0] == 1 and "synapses_sd" in given:
+        rule = "= 1 must be >= 2, since synapses_sd is given"
+        yield RuleError(rule, field="synapses_pairs_n")
+    if _numbers(given, "probability") == (0,) and "synapses_mean" in given:
+        rule = "is given although probability = 0 says that there is no connection"
+        yield RuleError(rule, field="synapses_mean")
+
+
+@lru_cache(maxsize=1024)
+def _unknown_type(name: str, names: tuple[str, ...]) -> tuple[str, str | None]:
+    # One misspelt type of a spec comes back in many rows.
+    rule, nearest = unknown_name(name, names, "cell type or group of the spec")
+    return f"= {shown(name)} {rule}", nearest
+
+
+def _check_row(
+    values: dict, names: tuple[str, ...]
+) -> tuple[RecordingRow | None, list[Fault]]:
+    """Check one row by itself and against the names of types and groups, if any."""
+    row, faults = validate(values, RecordingRow)
+    for column in ("pre_type", "post_type"):
+        name = values.get(column)
+        if names and isinstance(name, str) and name not in names:
+            faults.append(((column,), *_unknown_type(name, names)))
+    return row, faults
+
+
+def _place(row: RecordingRow, number: int, file: str, line: int) -> Recording:
+    # Checked already: its fields by RecordingRow, the place by its maker.
+    where = {"row": number, "file": file, "line": line}
+    return Recording.model_construct(**dict(row), **where)
+
+
+def inline_recordings(
+    document: Document, names: tuple[str, ...]
+) -> Iterator[Recording | Problem]:
+    """Yield the good recordings and the faults of the rows that a spec lists itself.
+
+    `names` are the cell types and groups of the spec; empty: names are not checked.
+    """
+    for index, values in enumerate(document.data["recordings"]):
+        if not isinstance(values, dict):
             continue
-        if header is None:
-            while values and not values[-1]:
-                values.pop()
-            header = values
-            if problems := _header_problems(path, header):
-                return [], problems
-            continue
-        if any(values[len(header) :]):
-            rule = f"has {len(values)} fields for {len(header)} columns"
-            problems.append(Problem(str(path), reader.line_num, "", rule))
-            continue
-        pairs = zip(header, values, strict=False)
-        fields = {name: value for name, value in pairs if value}
-        rows.append(_Raw(fields, len(rows) + 1, str(path), reader.line_num))
-    if header is None:
-        problems.append(Problem(str(path), 1, "", "has no header line"))
-    return rows, problems
+        here = ("recordings", index)
+        row, faults = _check_row(values, names)
+        for place, rule, nearest in faults:
+            yield document.problem((*here, *place), rule, nearest)
+        if not faults:
+            yield _place(row, index + 1, str(document.path), document.line(here))
 
 
-def _check_row(raw: _Raw, names: list[str]) -> tuple[Recording | None, list[Problem]]:
-    place = {"row": raw.row, "file": raw.file, "line": raw.line}
-    problems, recording = [], None
+class _Lines:
+    """Lines of a CSV text; counts them and skips comments that stand between rows."""
+
+    def __init__(self, text: str):
+        self._lines = io.StringIO(text, newline="")
+        self._line = 0
+        self.row_begins = True
+        self.row_line = 0
+
+    def __iter__(self) -> _Lines:
+        return self
+
+    def __next__(self) -> str:
+        for text in self._lines:
+            self._line += 1
+            if self.row_begins and text.startswith("#"):
+                continue
+            if self.row_begins:
+                self.row_line, self.row_begins = self._line, False
+            return text
+        raise StopIteration
+
+
+def _csv_rows(path: Path) -> Iterator[tuple[int, list[str]]]:
+    """Yield the line and the stripped cells of every row that is not blank."""
+    lines = _Lines(read_text(path))
+    reader = csv.reader(lines, strict=True)
+    while True:
+        lines.row_begins = True
+        try:
+            cells = [cell.strip() for cell in next(reader)]
+        except StopIteration:
+            return
+        except csv.Error as error:
+            rule = f"is not valid CSV: {error}"
+            raise InputError([Problem(str(path), lines.row_line, "", rule)]) from None
+        while cells and not cells[-1]:
+            cells.pop()
+        if cells:
+            yield lines.row_line, cells
+
+
+def _header_faults(header: list[str]) -> Iterator[Fault]:
+    for separator, name in ((";", "semicolons"), ("\t", "tabs")):
+        if len(header) == 1 and separator in header[0]:
+            rule = f"columns must be separated by commas, not by {name}"
+            yield (), rule, None
+            return
+    for index, name in enumerate(header):
+        if not name:
+            yield (), f"column {index + 1} has no name", None
+        elif name not in COLUMNS:
+            rule, nearest = unknown_name(name, COLUMNS, "known column")
+            yield (name,), rule, nearest
+        elif name in header[:index]:
+            rule = f"is column {header.index(name) + 1} and column {index + 1}"
+            yield (name,), rule, None
+    for name in ("pre_type", "post_type"):
+        if name not in header:
+            yield (name,), "column is missing", None
+
+
+def _typed(column: str, text: str) -> object:
+    """Return a cell as a number where its column holds numbers and it is one."""
+    if column in _TEXT_COLUMNS or not _NUMBER.fullmatch(text):
+        return text
+    number = float(text)
+    # Programs that keep blanks in columns of numbers write counts as 12.0.
+    is_whole = column.endswith("_n") and number.is_integer()
+    return int(number) if is_whole else number
+
+
+def read_recordings(path: Path, names: tuple[str, ...]) -> Iterator[Recording | Problem]:
+    """Yield the good recordings and the faults of a CSV file.
+
+    Lines that begin with ``#`` and blank lines are skipped. If the header is wrong,
+    the rows are not looked at. `names`: see `inline_recordings`.
+    """
+    rows = _csv_rows(path)
     try:
-        recording = Recording.model_validate({**raw.fields, **place})
-    except ValidationError as failure:
-        for error in failure.errors(include_url=False):
-            field = ".".join(map(str, error["loc"]))
-            rule, near = describe_error(Recording, error)
-            problems.append(Problem(raw.file, raw.line, field, rule, near))
-    for field in ("pre_type", "post_type"):
-        value = raw.fields.get(field)
-        if isinstance(value, str) and value not in names:
-            rule = f"= {value!r} is no cell type or group of the spec"
-            near = nearest_name(value, names)
-            problems.append(Problem(raw.file, raw.line, field, rule, near))
-    return recording, problems
-
-
-def check_recordings(
-    rows: Iterable[_Raw], names: Iterable[str]
-) -> tuple[tuple[Recording, ...], list[Problem]]:
-    """Check rows against the names of cell types and groups; collect all problems."""
-    names, recordings, problems = list(names), [], []
-    for raw in rows:
-        recording, found = _check_row(raw, names)
-        problems += found
-        recordings.append(recording)
-    return tuple(recordings), problems
-
-
-def read_recordings(path: Path, names: Iterable[str]):
-    """Read a CSV file of recordings; return (recordings, problems)."""
-    try:
-        rows, problems = _csv_rows(path)
+        line, header = next(rows, (None, []))
+        faults = list(_header_faults(header)) if header else [((), "is empty", None)]
+        yield from _problems(path, line, faults)
+        if not faults:
+            yield from _csv_recordings(path, header, rows, names)
     except InputError as error:
-        return (), list(error.problems)
-    except csv.Error as error:
-        return (), [Problem(str(path), None, "", f"is not valid CSV: {error}")]
-    recordings, more = check_recordings(rows, names)
-    return recordings, problems + more
+        yield from error.problems
 
 
-def inline_recordings(document, names: Iterable[str]):
-    """Check the recordings written in the spec itself; return (recordings, problems)."""
-    rows = [
-        _Raw(
-            {key: value for key, value in fields.items() if value is not None},
-            index + 1,
-            str(document.path),
-            document.line(("recordings", index)),
-        )
-        for index, fields in enumerate(document.data["recordings"])
-        if isinstance(fields, dict)
-    ]
-    return check_recordings(rows, names)
+def _csv_recordings(path, header, rows, names) -> Iterator[Recording | Problem]:
+    for number, (line, cells) in enumerate(rows, start=1):
+        if len(cells) > len(header):
+            rule = f"has {len(cells)} values for {len(header)} columns"
+            yield Problem(str(path), line, "", rule)
+            continue
+        values = {
+            column: _typed(column, text)
+            for column, text in zip(header, cells, strict=False)
+            if text
+        }
+        row, faults = _check_row(values, names)
+        yield from _problems(path, line, faults)
+        if not faults:
+            yield _place(row, number, str(path), line)
+
+
+def _problems(path: Path, line: int | None, faults: list[Fault]) -> Iterator[Problem]:
+    for place, rule, nearest in faults:
+        yield Problem(str(path), line, ".".join(map(str, place)), rule, nearest)
