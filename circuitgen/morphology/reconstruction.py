@@ -24,6 +24,7 @@ from pathlib import Path
 import numpy as np
 from scipy.spatial import cKDTree
 
+from circuitgen.core.errors import InputError, Problem
 from circuitgen.morphology.arbor import Kind
 from circuitgen.morphology.swc import Samples, order_from_roots, read_samples
 
@@ -161,11 +162,13 @@ class _Intake:
 
     def warn(self, kinds: set[int]) -> None:
         s = self.samples
-        extent = float(np.ptp(s.position_um, axis=0).max())
         if Kind.AXON not in kinds:
             self.find("warning", "no axon: the cell contacts nobody")
         if not kinds & {Kind.BASAL, Kind.APICAL}:
             self.find("warning", "no dendrite: only the soma can be contacted")
+        if not s.kind.size:
+            return
+        extent = float(np.ptp(s.position_um, axis=0).max())
         if extent > _NANOMETRE_EXTENT_UM:
             text = f"extent {extent:.0f} um: are the units nanometres?"
             self.find("warning", text)
@@ -284,7 +287,11 @@ def read_reconstruction(path: Path) -> Reconstruction:
     intake = _Intake(read_samples(path))
     file_cable_um = float(_edge_lengths(intake.samples).sum())
     intake.note_oddities()
+    line = int(intake.samples.line.min())
     intake.settle_kinds()
+    if not intake.samples.kind.size:
+        rule = "holds no sample of a neuron, only glia"
+        raise InputError([Problem(str(path), line, "", rule)])
     intake.root_at_soma()
     intake.mend_radii()
     soma = _soma_of(intake)
