@@ -14,7 +14,7 @@ from circuitgen.spec.models import AppositionRules, ColumnSpec, Conduction, Laye
 
 def make_type(name="one", *, radius=0.5, count=None, density=None):
     """Make a cell type without reconstruction files."""
-    return CellType(
+    return CellType.model_construct(
         name=name,
         sign="excitatory",
         density_per_mm3=density or {},
@@ -32,14 +32,14 @@ def make_spec(
 ):
     """Make a checked spec; `column` as in a spec file, a cylinder by default."""
     if mesh is not None:
-        column = {"shape": "mesh", "file": str(mesh)}
+        column = {"shape": "mesh", "file": mesh}
     column = column or {"shape": "cylinder", "diameter_um": 200.0}
     return Spec(
         path=Path("spec.yaml"),
         text="",
         name="made",
         seed=seed,
-        column=ColumnSpec(**column),
+        column=ColumnSpec.model_construct(**column),
         layers=tuple(Layer(name=name, thickness_um=size) for name, size in layers),
         cell_types=types,
         groups={},

@@ -15,9 +15,10 @@ from circuitgen.core.errors import InputError, Problem
 from circuitgen.morphology import Arbor, Kind
 from circuitgen.spec import Spec
 
-# Reconstructions whose share of cable outside the cortex is within this of the least
-# share fit equally well; of those with an apical dendrite, the ones whose top is within
-# this of the highest.
+# Of a type with apical dendrites, reconstructions whose top stays below the pia come
+# first. Those whose share of cable outside the cortex is within FIT_SHARE of the least
+# fit equally well, but only the ones whose apical top is within FIT_TOP_UM of the
+# highest are used: a tuft belongs in the upper layers.
 FIT_SHARE = 0.02
 FIT_TOP_UM = 30.0
 _TILE_UM = 100.0
@@ -153,8 +154,11 @@ def _tops(arbor: Arbor) -> float:
 def _choose_arbors(own: Sequence[Arbor], height, thickness, draws):
     """Choose a reconstruction for each soma; return (choice, share outside)."""
     outside = np.column_stack([_outside_shares(a, height, thickness) for a in own])
-    fits = outside <= outside.min(axis=1, keepdims=True) + FIT_SHARE
     tops = np.array([_tops(arbor) for arbor in own])
+    below = tops[None, :] + height[:, None] <= thickness
+    below |= ~below.any(axis=1, keepdims=True)
+    least = np.where(below, outside, np.inf).min(axis=1, keepdims=True)
+    fits = below & (outside <= least + FIT_SHARE)
     if np.isfinite(tops).any():
         reach = np.where(fits, tops, -np.inf)
         fits &= reach >= reach.max(axis=1, keepdims=True) - FIT_TOP_UM
