@@ -1,7 +1,7 @@
 """Cable lengths of real reconstructions against a reference library.
 
-The files are five reconstructions of olfactory projection neurons that ship with the
-library navis (https://navis-org.github.io/navis, GPL-3), in nanometre voxels.
+The files are five real reconstructions that ship with the
+library navis (https://navis-org.github.io/navis) as examples; their unit does not matter.
 """
 
 import warnings
