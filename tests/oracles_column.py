@@ -1,89 +1,58 @@
-"""Specs without files, simple arbors and slow twins for the tests of the column."""
+"""Slow, readable twins of the column's kernels."""
 
 from __future__ import annotations
 
-from pathlib import Path
-
 import numpy as np
-from builders import arbor_from_segments
-
-from circuitgen.morphology.arbor import Kind
-from circuitgen.spec import CellType, Spec
-from circuitgen.spec.models import AppositionRules, ColumnSpec, Conduction, Layer
 
 
-def make_type(name="one", *, radius=0.5, count=None, density=None):
-    """Make a cell type without reconstruction files."""
-    return CellType.model_construct(
-        name=name,
-        sign="excitatory",
-        density_per_mm3=density or {},
-        count=count or {},
-        morphologies=(),
-        upright="y",
-        soma_radius_um=radius,
-        targets=("soma",),
-        ais_um=40.0,
-    )
+def solid_angle_winding(point, corners):
+    """Winding of a closed surface about a point, from the solid angles of triangles.
+
+    Formula of van Oosterom & Strackee 1983, IEEE Trans Biomed Eng 30:125 (recalled).
+    """
+    a, b, c = np.moveaxis(corners - point, 1, 0)
+    la, lb, lc = (np.linalg.norm(side, axis=1) for side in (a, b, c))
+    triple = np.sum(a * np.cross(b, c), axis=1)
+    below = la * lb * lc
+    for pair, other in (((a, b), lc), ((b, c), la), ((c, a), lb)):
+        below += np.sum(pair[0] * pair[1], axis=1) * other
+    return round(float(np.sum(2 * np.arctan2(triple, below))) / (4 * np.pi))
 
 
-def make_spec(
-    *types, layers=(("L1", 100.0), ("L2", 300.0)), seed=3, mesh=None, **column
-):
-    """Make a checked spec; `column` as in a spec file, a cylinder by default."""
-    if mesh is not None:
-        column = {"shape": "mesh", "file": mesh}
-    column = column or {"shape": "cylinder", "diameter_um": 200.0}
-    return Spec(
-        path=Path("spec.yaml"),
-        text="",
-        name="made",
-        seed=seed,
-        column=ColumnSpec.model_construct(**column),
-        layers=tuple(Layer(name=name, thickness_um=size) for name, size in layers),
-        cell_types=types,
-        groups={},
-        appositions=AppositionRules(),
-        recordings=(),
-        conduction=Conduction(),
-        input_files=(),
-    )
+def apart(first, second, wrap_um):
+    """Distance of two points; along a wrapped axis that of the nearest copies."""
+    difference = np.asarray(first) - np.asarray(second)
+    for axis, period in enumerate(wrap_um):
+        if period > 0:
+            difference[axis] -= period * round(difference[axis] / period)
+    return float(np.sqrt(difference @ difference))
 
 
-def make_arbor(up_um=20.0, down_um=20.0, *, apical=True, side_um=0.0, steps=20):
-    """Make an arbor of a soma and three straight branches cut into `steps` pieces."""
-    ends = [
-        (Kind.APICAL if apical else Kind.BASAL, np.array([0.0, 0.0, up_um])),
-        (Kind.AXON, np.array([0.0, 0.0, -down_um])),
-        (Kind.BASAL, np.array([side_um, 0.0, 0.0])),
-    ]
-    rows = [(np.zeros(3), np.zeros(3), Kind.SOMA)]
-    for kind, end in ends:
-        points = np.linspace(0, 1, steps + 1)[:, None] * end
-        rows += [
-            (begin, stop, kind)
-            for begin, stop in zip(points[:-1], points[1:], strict=True)
-        ]
-    start, end, kind = zip(*rows, strict=True)
-    return arbor_from_segments(start, end, kind)
+def take_in_turn(candidates, is_cell, radius, wanted, taken, wrap_um):
+    """Take free candidates in order until enough are cells; returns their rows.
+
+    `taken` is a list of (centre, radius) and grows.
+    """
+    rows, cells_n = [], 0
+    for row, candidate in enumerate(candidates):
+        if cells_n == wanted:
+            break
+        if all(apart(candidate, c, wrap_um) >= radius + r for c, r in taken):
+            taken.append((candidate, radius))
+            rows.append(row)
+            cells_n += bool(is_cell[row])
+    return rows
 
 
-def outside_share(arbor, height_um, thickness_um):
-    """Share of the cable whose pieces have their middle outside the cortex."""
-    outside = total = 0.0
-    for begin, end in zip(arbor.start_um, arbor.end_um, strict=True):
-        length = np.linalg.norm(end - begin)
-        middle = height_um + (begin[2] + end[2]) / 2
-        total += length
-        outside += length * (middle < 0 or middle > thickness_um)
-    return outside / total
-
-
-def apical_top(arbor):
-    """Height of the apical dendrite's top above the soma; minus infinity without."""
-    tops = [
-        end[2]
-        for end, kind in zip(arbor.end_um, arbor.kind, strict=True)
-        if kind == Kind.APICAL
-    ]
-    return max(tops, default=-np.inf)
+def smallest_clearance(position_um, radius_um, wrap_um=(0.0, 0.0)):
+    """Smallest distance between the surfaces of any two somata, all pairs tried."""
+    least = np.inf
+    for row in range(len(position_um) - 1):
+        difference = position_um[row + 1 :] - position_um[row]
+        for axis, period in enumerate(wrap_um):
+            if period > 0:
+                difference[:, axis] -= period * np.round(difference[:, axis] / period)
+        distance = np.linalg.norm(difference, axis=1)
+        clearance = distance - radius_um[row + 1 :] - radius_um[row]
+        least = min(least, float(clearance.min()))
+    return least

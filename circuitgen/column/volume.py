@@ -1,164 +1,155 @@
-"""The volume of cortex: cylinder, hexagonal prism, box or closed mesh."""
+"""The piece of cortex: its shape, exact volumes of slabs, and what lies inside.
+
+Circuit frame: x and y tangential, z toward the pia, z = 0 at the white-matter
+boundary. Cylinder, hexagon and box are centred on x = y = 0.
+"""
 
 from __future__ import annotations
 
+import math
+from abc import ABC, abstractmethod
+from collections.abc import Callable
 from dataclasses import dataclass
-from pathlib import Path
-from typing import Protocol
 
 import numpy as np
 
-from circuitgen.core.errors import InputError, Problem
-from circuitgen.spec import Spec
-
-
-class Volume(Protocol):
-    """What every shape can tell; micrometres throughout."""
-
-    low_um: np.ndarray
-    high_um: np.ndarray
-    wrap_um: tuple[float, float]
-
-    def contains(self, points_um: np.ndarray) -> np.ndarray:
-        """Tell for points (n, 3) whether they lie inside."""
-
-    def slab_volume_um3(self, low_um: float, high_um: float) -> float:
-        """Return the volume between two heights."""
+from circuitgen.spec import ColumnSpec, Spec
 
 
 @dataclass(frozen=True)
-class Prism:
-    """A shape that is the same at every height, about the axis x = y = 0.
+class Volume(ABC):
+    """What every shape can tell.
 
-    `side_um` is a diameter, the distance across flats (flats face +-x), or the widths
-    in x and y.
+    Attributes
+    ----------
+    thickness_um : float
+        Thickness of the cortex; the volume lies between z = 0 and this z.
+    wrap_um : tuple of float
+        Periods in x and y; 0 where the edge is open.
+    warnings : tuple of str
+        What a user should know about the shape; empty when all is well.
     """
 
-    shape: str
-    side_um: tuple[float, float]
     thickness_um: float
-    wrap_um: tuple[float, float] = (0.0, 0.0)
+    wrap_um: tuple[float, float]
+    warnings: tuple[str, ...]
+
+    @abstractmethod
+    def contains(self, points_um: np.ndarray) -> np.ndarray:
+        """Tell for points (n, 3) whether each is inside, shape (n,)."""
+
+    @abstractmethod
+    def slab_volume_um3(self, z_low_um: float, z_high_um: float) -> float:
+        """Return the exact volume between two heights, in cubic micrometres."""
+
+    @abstractmethod
+    def slab_box_um(
+        self, z_low_um: float, z_high_um: float
+    ) -> tuple[np.ndarray, np.ndarray]:
+        """Return the lowest and highest corner of a box around a slab, each (3,).
+
+        A slab without volume has a box without extent.
+        """
+
+    @property
+    def box_um(self) -> tuple[np.ndarray, np.ndarray]:
+        """Lowest and highest corner of a box around the volume, each (3,)."""
+        return self.slab_box_um(0.0, self.thickness_um)
 
     @property
     def area_um2(self) -> float:
-        """Tangential area."""
-        a, b = self.side_um
-        if self.shape == "cylinder":
-            return np.pi * a**2 / 4
-        return np.sqrt(3) / 2 * a**2 if self.shape == "hexagon" else a * b
-
-    @property
-    def high_um(self) -> np.ndarray:
-        """Highest corner of the box around the shape."""
-        a, b = self.side_um
-        if self.shape == "hexagon":
-            b = 2 * a / np.sqrt(3)
-        return np.array([a / 2, b / 2, self.thickness_um])
-
-    @property
-    def low_um(self) -> np.ndarray:
-        """Lowest corner of the box around the shape."""
-        return self.high_um * [-1, -1, 0]
-
-    def contains(self, points_um: np.ndarray) -> np.ndarray:
-        """Tell for points (n, 3) whether they lie inside."""
-        x, y, z = np.asarray(points_um, float).T
-        inside = (z >= 0) & (z <= self.thickness_um)
-        a, b = np.array(self.side_um) / 2
-        if self.shape == "cylinder":
-            return inside & (x**2 + y**2 <= a**2)
-        inside &= np.abs(x) <= a
-        if self.shape == "box":
-            return inside & (np.abs(y) <= b)
-        return inside & (np.abs(x) / 2 + np.abs(y) * np.sqrt(3) / 2 <= a)
-
-    def slab_volume_um3(self, low_um: float, high_um: float) -> float:
-        """Return the volume between two heights."""
-        low, high = max(low_um, 0.0), min(high_um, self.thickness_um)
-        return float(self.area_um2 * max(high - low, 0.0))
+        """Tangential area: the mean cross-section over the thickness of the cortex."""
+        return self.slab_volume_um3(0.0, self.thickness_um) / self.thickness_um
 
 
-class MeshVolume:
-    """A closed surface, its coordinates those of the circuit frame."""
+@dataclass(frozen=True)
+class Prism(Volume):
+    """A shape with the same cross-section at every depth.
 
-    wrap_um = (0.0, 0.0)
-
-    def __init__(self, mesh):
-        self._mesh = mesh
-        self.low_um, self.high_um = np.array(mesh.bounds, float)
-
-    def contains(self, points_um: np.ndarray) -> np.ndarray:
-        """Tell for points (n, 3) whether they lie inside, by ray casting."""
-        return self._mesh.contains(np.asarray(points_um, float))
-
-    def slab_volume_um3(self, low_um: float, high_um: float) -> float:
-        """Return the volume between two heights.
-
-        The divergence theorem with the field (x, 0, 0): the flat faces of the slab have
-        no normal along x, so only the surface between the two heights counts.
-        """
-        from trimesh.intersections import slice_mesh_plane
-
-        part = self._mesh
-        for height, way in ((low_um, 1.0), (high_um, -1.0)):
-            part = slice_mesh_plane(part, [0, 0, way], [0, 0, height])
-            if not len(part.faces):
-                return 0.0
-        middle_x = part.triangles[:, :, 0].mean(axis=1)
-        cross = np.cross(
-            part.triangles[:, 1] - part.triangles[:, 0],
-            part.triangles[:, 2] - part.triangles[:, 0],
-        )
-        return float((middle_x * cross[:, 0] / 2).sum())
-
-
-def _refuse(path: Path, rule: str) -> InputError:
-    return InputError([Problem(str(path), None, "", rule)])
-
-
-def read_mesh(path: Path, thickness_um: float) -> MeshVolume:
-    """Read a closed mesh (STL, OBJ, PLY, GLB) in micrometres of the circuit frame.
-
-    Raises InputError when it cannot be read, is not closed, is several bodies, or does
-    not reach the cortex from z = 0 to its thickness.
+    Attributes
+    ----------
+    section_um2 : float
+        Area of the cross-section.
+    half_width_um : tuple of float
+        Half the extents of the cross-section along x and y.
+    in_section : callable
+        Tells for x (n,) and y (n,) which points the cross-section contains.
     """
-    import trimesh
 
-    try:
-        mesh = trimesh.load(path, force="mesh")
-    except Exception as error:  # the readers of the library raise anything
-        raise _refuse(path, f"cannot be read as a mesh: {error}") from None
-    if not len(getattr(mesh, "faces", ())):
-        raise _refuse(path, "holds no triangle")
-    mesh.merge_vertices()
-    if not mesh.is_watertight:
-        rule = "is not closed (some edge does not join two triangles): fill its holes"
-        raise _refuse(path, rule)
-    if not mesh.is_winding_consistent:
-        rule = "has triangles that face inward and others outward: unify its normals"
-        raise _refuse(path, rule)
-    if mesh.body_count != 1:
-        raise _refuse(path, f"holds {mesh.body_count} bodies; one is needed")
-    if mesh.volume < 0:
-        mesh.invert()
-    low, high = mesh.bounds[:, 2]
-    if low > 0.01 * thickness_um or high < 0.99 * thickness_um:
-        rule = (
-            f"reaches from z = {low:.4g} to {high:.4g}, the layers from 0 to"
-            f" {thickness_um:g}: the mesh must hold the cortex, in micrometres"
-        )
-        raise _refuse(path, rule)
-    return MeshVolume(mesh)
+    section_um2: float
+    half_width_um: tuple[float, float]
+    in_section: Callable[[np.ndarray, np.ndarray], np.ndarray]
+
+    def contains(self, points_um: np.ndarray) -> np.ndarray:
+        """Tell for points (n, 3) whether each is inside, shape (n,)."""
+        x, y, z = np.asarray(points_um, dtype=np.float64).T
+        return (z >= 0) & (z <= self.thickness_um) & self.in_section(x, y)
+
+    def slab_volume_um3(self, z_low_um: float, z_high_um: float) -> float:
+        """Return the exact volume between two heights, in cubic micrometres."""
+        low, high = np.clip([z_low_um, z_high_um], 0.0, self.thickness_um)
+        return self.section_um2 * max(float(high - low), 0.0)
+
+    def slab_box_um(
+        self, z_low_um: float, z_high_um: float
+    ) -> tuple[np.ndarray, np.ndarray]:
+        """Return the lowest and highest corner of a box around a slab, each (3,)."""
+        low, high = np.clip([z_low_um, z_high_um], 0.0, self.thickness_um)
+        half = np.array(self.half_width_um)
+        return np.array([*-half, low]), np.array([*half, max(low, high)])
+
+
+def _cylinder(column: ColumnSpec) -> tuple:
+    radius = column.diameter_um / 2
+    return (
+        math.pi * radius**2,
+        (radius, radius),
+        lambda x, y: x**2 + y**2 <= radius**2,
+    )
+
+
+def _hexagon(column: ColumnSpec) -> tuple:
+    """Regular hexagon with two sides at right angles to x, one corner on +y."""
+    apothem = column.across_flats_um / 2
+    # sin and cos of 60 degrees: the other sides face 60 degrees away from x.
+    high, low = math.sqrt(3) / 2, 0.5
+    return (
+        2 * math.sqrt(3) * apothem**2,
+        (apothem, apothem / high),
+        lambda x, y: (
+            (np.abs(x) <= apothem) & (low * np.abs(x) + high * np.abs(y) <= apothem)
+        ),
+    )
+
+
+def _box(column: ColumnSpec) -> tuple:
+    half_x, half_y = column.width_um / 2, column.length_um / 2
+    return (
+        column.width_um * column.length_um,
+        (half_x, half_y),
+        lambda x, y: (np.abs(x) <= half_x) & (np.abs(y) <= half_y),
+    )
+
+
+_SECTIONS = {"cylinder": _cylinder, "hexagon": _hexagon, "box": _box}
 
 
 def make_volume(spec: Spec) -> Volume:
-    """Return the volume that a spec describes."""
-    column, thickness = spec.column, spec.thickness_um
+    """Make the volume that a spec describes.
+
+    Raises InputError, naming the file, when a mesh file does not hold one closed
+    surface in micrometres around some part of the layers.
+    """
+    column = spec.column
     if column.shape == "mesh":
-        return read_mesh(spec.column.file, thickness)
-    if column.shape == "box":
-        sides = (column.width_um, column.length_um)
-        wrap = sides if column.edges == "wrap" else (0.0, 0.0)
-        return Prism("box", sides, thickness, wrap)
-    side = column.diameter_um if column.shape == "cylinder" else column.across_flats_um
-    return Prism(column.shape, (side, side), thickness)
+        # Imported here: the mesh library is slow to import and seldom needed.
+        from circuitgen.column.mesh import read_mesh_volume
+
+        return read_mesh_volume(spec)
+    is_periodic = column.edges == "wrap"
+    return Prism(
+        spec.thickness_um,
+        (column.width_um, column.length_um) if is_periodic else (0.0, 0.0),
+        (),
+        *_SECTIONS[column.shape](column),
+    )

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from circuitgen.appositions import TARGET_BITS, Scene, make_scene
-from circuitgen.column import Cells, Placement, make_volume, place_cells
+from circuitgen.column import Cells, Placement, place_cells
 from circuitgen.core.errors import InputError
 from circuitgen.core.progress import Progress
 from circuitgen.core.run_tables import CELLS
@@ -87,16 +87,6 @@ def _target_masks(spec: Spec) -> np.ndarray:
     )
 
 
-def _outside_warnings(spec: Spec, placement: Placement) -> list[str]:
-    return [
-        f"{cell_type.name}: {share:.0%} of the cable lies outside the cortex"
-        for cell_type, share in zip(
-            spec.cell_types, placement.outside_share, strict=True
-        )
-        if share > 0.05
-    ]
-
-
 def assemble(spec: Spec) -> Circuit:
     """Read the reconstructions, place the cells, and make them ready for the search."""
     by_type, warnings = read_arbors(spec)
@@ -112,9 +102,9 @@ def assemble(spec: Spec) -> Circuit:
         max_gap_um=spec.appositions.max_gap_um,
         min_spacing_um=spec.appositions.min_spacing_um,
         autapses=spec.appositions.autapses,
-        wrap_um=make_volume(spec).wrap_um,
+        wrap_um=placement.volume.wrap_um,
     )
-    warnings += [*placement.warnings, *_outside_warnings(spec, placement)]
+    warnings += placement.warnings
     return Circuit(spec, tuple(arbors), placement, scene, tuple(warnings))
 
 
