@@ -287,12 +287,21 @@ def test_loose_pieces_are_kept_near_and_dropped_far_by_the_rule(tmp_path):
     assert course(dropped) == course(read(tmp_path, PLAIN))
 
 
-@pytest.mark.parametrize(("x_um", "joined"), [(14.9, True), (15.1, False)])
-def test_a_root_within_10_um_of_the_soma_leaves_it(tmp_path, x_um, joined):
-    r = read(tmp_path, PLAIN + f"20 3 0 0 {x_um} 0.4 -1\n21 3 0 0 60 0.4 20\n")
+@pytest.mark.parametrize(("z_um", "joined"), [(14.9, True), (15.1, False)])
+def test_a_root_within_10_um_of_the_soma_leaves_it(tmp_path, z_um, joined):
+    r = read(tmp_path, PLAIN + f"20 3 0 0 {z_um} 0.4 -1\n21 3 0 0 60 0.4 20\n")
     start = int(np.flatnonzero(r.piece == 20)[0])
     assert (r.parent[start] == -1) == joined
-    assert bool(r.bridged[start]) != joined
+    assert r.bridged[start]
+    beside = "pieces that begin beside the soma joined to it"
+    kept = f"1 loose pieces ({60 - z_um:.0f} um) kept across gaps"
+    assert said(r) == [repaired(beside if joined else kept, 1, 11)]
+
+
+def test_a_root_inside_the_soma_needs_no_repair(tmp_path):
+    r = read(tmp_path, PLAIN + "20 3 0 0 3 0.4 -1\n21 3 0 0 60 0.4 20\n")
+    assert r.findings == ()
+    assert (r.parent[r.piece == 20] == -1).all()
 
 
 def test_several_roots_are_all_counted(tmp_path):

@@ -17,6 +17,7 @@ from circuitgen.morphology.arbor import Arbor, Kind
 from circuitgen.morphology.reconstruction import Reconstruction
 from circuitgen.morphology.simplify import corners
 
+_TINY_UM = 1e-9
 # Rows of the turn that brings the named axis of a file up to z.
 _UPRIGHT = {
     "x": ((0, 1, 0), (0, 0, 1), (1, 0, 0)),
@@ -33,13 +34,47 @@ class _Section:
     """Samples of one unbranched stretch, the sample (or soma) before it included.
 
     `points_um` and `radii_um` have one row more than `samples` unless the section
-    begins after a gap. `skip_um` is the stretch at its start inside the soma.
+    begins after a gap, over which the path runs on for `gap_um`.
     """
 
     samples: np.ndarray
     points_um: np.ndarray
     radii_um: np.ndarray
-    skip_um: float
+    gap_um: float
+
+
+@dataclass(frozen=True)
+class _Spheres:
+    """The soma as spheres about the ends of its capsules."""
+
+    center_um: np.ndarray
+    radius_um: np.ndarray
+
+    def gap_um(self, point: np.ndarray) -> float:
+        """Distance of a point from the surface, 0 inside."""
+        away = np.linalg.norm(self.center_um - point, axis=1) - self.radius_um
+        return max(float(away.min()), 0.0)
+
+    def inside_um(self, points: np.ndarray, along: np.ndarray) -> float:
+        """Length of a course, from its first point, until it leaves the spheres."""
+        for start, step, low, length in zip(
+            points[:-1], np.diff(points, axis=0), along, np.diff(along), strict=False
+        ):
+            if length == 0:
+                continue
+            # Where the straight line enters and leaves each sphere.
+            way, offset = step / length, start - self.center_um
+            middle = -offset @ way
+            square = middle**2 - (offset**2).sum(axis=1) + self.radius_um**2
+            half = np.sqrt(np.maximum(square, 0.0))
+            here = 0.0
+            while here < length - _TINY_UM:
+                reach = (middle - half <= here + _TINY_UM) & (middle + half > here)
+                leave = (middle + half)[reach & (square > 0)].max(initial=here)
+                if leave <= here + _TINY_UM:
+                    return float(low + here)
+                here = leave
+        return float(along[-1])
 
 
 def _children(parent: np.ndarray) -> dict[int, list[int]]:
@@ -62,27 +97,31 @@ def _run(start: int, kind: np.ndarray, bridged, children) -> list[int]:
         run.append(child)
 
 
-def _section(r: Reconstruction, points: np.ndarray, run: list[int]) -> _Section:
+def _section(
+    r: Reconstruction, points: np.ndarray, soma: _Spheres, run: list[int]
+) -> _Section:
     samples = np.array(run)
     first = run[0]
     above = r.parent[first]
     own, radii = points[samples], r.radius_um[samples]
     if r.bridged[first]:
-        return _Section(samples, own, radii, 0.0)
-    if above >= 0:
-        same = r.kind[above] == r.kind[first]
-        before, radius = points[above], r.radius_um[above] if same else radii[0]
-        skip = 0.0
-    else:
-        before, radius = points[r.kind.size + first], radii[0]
-        step = np.linalg.norm(own[0] - before)
-        skip = min(step, float(r.soma.radius_um.max()))
+        gap = (
+            float(np.linalg.norm(own[0] - points[above]))
+            if above >= 0
+            else soma.gap_um(own[0])
+        )
+        return _Section(samples, own, radii, gap)
+    same = above >= 0 and r.kind[above] == r.kind[first]
+    before = points[above if above >= 0 else r.kind.size + first]
+    radius = r.radius_um[above] if same else radii[0]
     return _Section(
-        samples, np.vstack([before, own]), np.concatenate([[radius], radii]), skip
+        samples, np.vstack([before, own]), np.concatenate([[radius], radii]), 0.0
     )
 
 
-def _sections(r: Reconstruction, points: np.ndarray) -> Iterator[tuple[_Section, int]]:
+def _sections(
+    r: Reconstruction, points: np.ndarray, soma: _Spheres
+) -> Iterator[tuple[_Section, int]]:
     """Yield sections from the soma outward with the sample that each continues."""
     children, where = _children(r.parent), np.round(points, 6)
 
@@ -93,24 +132,26 @@ def _sections(r: Reconstruction, points: np.ndarray) -> Iterator[tuple[_Section,
     pending = [(run, -1) for run in reversed(ordered(children.get(-1, [])))]
     while pending:
         run, above = pending.pop()
-        yield _section(r, points, run), above
+        yield _section(r, points, soma, run), above
         following = ordered(children.get(run[-1], []))
         pending += [(child, run[-1]) for child in reversed(following)]
 
 
-def _begin_after(section: _Section, along: np.ndarray) -> tuple[np.ndarray, ...]:
-    """Cut the stretch inside the soma off a section's points, radii and lengths."""
-    points, radii, skip = section.points_um, section.radii_um, section.skip_um
+def _begin_after(section: _Section, along: np.ndarray, skip: float):
+    """Cut the first `skip` um off a section's points, radii and lengths."""
+    points, radii = section.points_um, section.radii_um
     if skip <= 0:
         return points, radii, along
-    if skip >= along[1] - 1e-9:
-        return points[1:], radii[1:], along[1:]
-    share = skip / along[1]
-    edge = points[0] + share * (points[1] - points[0])
+    first = int(np.searchsorted(along, skip + _TINY_UM, side="right"))
+    if first == along.size:
+        return points[:0], radii[:0], along[:0]
+    share = (skip - along[first - 1]) / (along[first] - along[first - 1])
+    edge = points[first - 1] + share * (points[first] - points[first - 1])
+    radius = radii[first - 1] + share * (radii[first] - radii[first - 1])
     return (
-        np.vstack([edge, points[1:]]),
-        radii,
-        np.concatenate([[skip], along[1:]]),
+        np.vstack([edge, points[first:]]),
+        np.concatenate([[radius], radii[first:]]),
+        np.concatenate([[skip], along[first:]]),
     )
 
 
@@ -143,14 +184,16 @@ def _cut_all(path, length, spacing: float, stop: float):
 class _Builder:
     """Collects segments and pieces of the file, section by section."""
 
-    def __init__(self, r: Reconstruction, spacing_um: float, ais_um: float):
-        self.r, self.spacing_um, self.ais_um = r, spacing_um, ais_um
+    def __init__(self, r: Reconstruction, soma: _Spheres, spacing_um, ais_um):
+        self.r, self.soma = r, soma
+        self.spacing_um, self.ais_um = spacing_um, ais_um
         self.rows: list[tuple[np.ndarray, ...]] = []
         self.piece_number: list[np.ndarray] = []
         self.piece_backward: list[np.ndarray] = []
         self.piece_length: list[np.ndarray] = []
         self.cable_um, self.pieces_n, self.segments_n = 0.0, 0, 0
         self.path_at = np.zeros(r.kind.size)
+        self.within = np.zeros(r.kind.size, bool)
         self.last_segment = np.full(r.kind.size, -1, np.int64)
 
     def _note_pieces(self, numbers, backward, lengths) -> None:
@@ -177,29 +220,31 @@ class _Builder:
             pieces, pieces,
         )  # fmt: skip
 
-    def add_section(self, section: _Section, above: int, points: np.ndarray) -> None:
+    def add_section(self, section: _Section, above: int) -> None:
         """Add one section: its pieces of the file, then its segments."""
-        r, first = self.r, section.samples[0]
+        r = self.r
         steps = np.diff(section.points_um, axis=0)
         lengths = np.linalg.norm(steps, axis=1)
         along = np.concatenate([[0.0], np.cumsum(lengths)])
+        skip = 0.0
+        if above < 0 or self.within[above]:
+            skip = self.soma.inside_um(section.points_um, along)
         path = self.path_at[above] if above >= 0 else 0.0
-        if r.bridged[first]:
-            path += float(np.linalg.norm(points[first] - points[above]))
-        self.path_at[section.samples] = (
-            path + along[-len(section.samples) :] - section.skip_um
-        )
+        path += section.gap_um - skip
+        at = along[-len(section.samples) :]
+        self.path_at[section.samples] = np.maximum(path + at, 0.0)
+        self.within[section.samples] = at < skip + _TINY_UM if skip else False
         parent = self.last_segment[above] if above >= 0 else -1
         before = self.segments_n
         base, piece = self.cable_um, self.pieces_n
         own = section.samples[len(section.samples) - len(lengths) :]
         self._note_pieces(r.piece[own], r.backward[own], lengths)
-        self._add_segments(section, along, path, parent, base, piece)
+        self._add_segments(section, along, skip, path, parent, base, piece)
         grown = self.segments_n > before
         self.last_segment[section.samples] = self.segments_n - 1 if grown else parent
 
-    def _add_segments(self, section, along, path, parent, base, piece) -> None:
-        points, radii, inner = _begin_after(section, along)
+    def _add_segments(self, section, along, skip, path, parent, base, piece) -> None:
+        points, radii, inner = _begin_after(section, along, skip)
         if len(points) < 2:
             return
         kept = corners(points, radii)
@@ -207,7 +252,7 @@ class _Builder:
         chord, widen = np.diff(points, axis=0), np.diff(radii)
         kind = self.r.kind[section.samples[0]]
         stop = self.ais_um if kind == Kind.AXON else -1.0
-        from_soma = path - section.skip_um + inner
+        from_soma = path + inner
         length = np.sqrt((chord**2).sum(axis=1))
         which, begin, end = _cut_all(from_soma, length, self.spacing_um, stop)
         n = which.size
@@ -221,8 +266,8 @@ class _Builder:
         first_piece = np.minimum(np.maximum(first_piece, 0), last)
         last_piece = np.searchsorted(along, cable_end, side="left") - 1
         last_piece = np.minimum(np.maximum(last_piece, first_piece), last)
-        path_begin = path - section.skip_um + cable_begin
-        path_end = path - section.skip_um + cable_end
+        path_begin = path + cable_begin
+        path_end = path + cable_end
         self._add(
             points[which] + begin[:, None] * chord[which],
             points[which] + end[:, None] * chord[which],
@@ -280,8 +325,10 @@ def build_arbor(
     center = r.soma.center_um
     # Samples first, then the point at which each would leave the soma.
     points = np.vstack([r.position_um - center, r.stem_um - center]) @ turn
-    builder = _Builder(r, min_spacing_um, ais_um)
-    builder.add_soma((r.soma.start_um - center) @ turn, (r.soma.end_um - center) @ turn)
-    for section, above in _sections(r, points):
-        builder.add_section(section, above, points)
+    start, end = (r.soma.start_um - center) @ turn, (r.soma.end_um - center) @ turn
+    soma = _Spheres(np.vstack([start, end]), np.tile(r.soma.radius_um, 2))
+    builder = _Builder(r, soma, min_spacing_um, ais_um)
+    builder.add_soma(start, end)
+    for section, above in _sections(r, points, soma):
+        builder.add_section(section, above)
     return builder.arbor()

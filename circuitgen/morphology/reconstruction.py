@@ -64,7 +64,8 @@ class Reconstruction:
     """Neurites of one file, parents before children, and the soma.
 
     n samples. `parent` is an index, -1 where the sample leaves the soma from
-    `stem_um`; `bridged` marks samples whose gap to the parent is no cable. `piece` and
+    `stem_um`; `bridged` marks samples whose gap to the parent, or to the soma, is no
+    cable. `piece` and
     `backward` lead from the piece before a sample to the file, as in `Samples`.
     """
 
@@ -241,25 +242,29 @@ def _join_loose(intake: _Intake, soma: Soma, leaves_soma: np.ndarray):
     s = intake.samples
     root = _root_of(s.parent)
     is_root = s.parent < 0
-    close = _surface_gap(soma, s.position_um) <= JOIN_TO_SOMA_UM
-    near = is_root & (leaves_soma | close)
+    gap = _surface_gap(soma, s.position_um)
+    near = is_root & (leaves_soma | (gap <= JOIN_TO_SOMA_UM))
     attached = near[root]
     bridged, dropped = np.zeros(root.size, bool), np.zeros(root.size, bool)
     parent = s.parent.copy()
+    # A root beside the soma has no piece of the file that leads there.
+    bridged |= near & ~leaves_soma
+    text = "pieces that begin beside the soma joined to it"
+    intake.find("repair", text, bridged & (gap > 0))
     if attached.all():
         return parent, bridged, dropped
     tree = cKDTree(s.position_um[attached]) if attached.any() else None
     loose = np.flatnonzero(is_root & ~near)
     for piece in loose:
-        gap, place = np.inf, 0
+        away, place = np.inf, 0
         if tree is not None:
-            gap, place = tree.query(s.position_um[piece])
-        if gap <= JOIN_LOOSE_UM:
+            away, place = tree.query(s.position_um[piece])
+        if away <= JOIN_LOOSE_UM:
             parent[piece] = np.flatnonzero(attached)[place]
             bridged[piece] = True
         else:
             dropped |= root == piece
-    _report_loose(intake, root, bridged, dropped)
+    _report_loose(intake, root, bridged & (parent >= 0), dropped)
     return parent, bridged, dropped
 
 
