@@ -25,10 +25,11 @@ def write_table(path, table):
     return path
 
 
-def resampled(table, step_um):
-    """Cut every piece into equal parts no longer than a step, radii in proportion.
+def _cut(table, parts_of):
+    """Cut every piece into the equal parts that its length asks for.
 
-    A piece that leaves the soma, or changes kind, has the radius at its far end.
+    Radii are in proportion; a piece that leaves the soma, or changes kind, has the
+    radius at its far end.
     """
     row_of = {int(row[0]): row for row in table}
     rows, number = [], int(table[:, 0].max())
@@ -37,11 +38,10 @@ def resampled(table, step_um):
         if above is None or above[1] == SOMA == row[1]:
             rows.append(row)
             continue
-        length = np.linalg.norm(row[2:5] - above[2:5])
-        parts = max(int(np.ceil(length / step_um)), 1)
         start = above[2:6].copy()
         if above[1] != row[1]:
             start[3] = row[5]
+        parts = parts_of(np.linalg.norm(row[2:5] - above[2:5]))
         parent = row[6]
         for k in range(1, parts):
             number += 1
@@ -52,24 +52,14 @@ def resampled(table, step_um):
     return np.array(rows)
 
 
+def resampled(table, step_um):
+    """Put samples no farther apart than a step."""
+    return _cut(table, lambda length: max(int(np.ceil(length / step_um)), 1))
+
+
 def halved(table):
     """Cut every piece in two."""
-    row_of = {int(row[0]): row for row in table}
-    longest = {}
-    rows, number = [], int(table[:, 0].max())
-    for row in table:
-        above = row_of.get(int(row[6]))
-        longest[int(row[0])] = row
-        if above is None or above[1] == SOMA == row[1]:
-            rows.append(row)
-            continue
-        number += 1
-        between = (row[2:6] + above[2:6]) / 2
-        if above[1] != row[1]:
-            between[3] = row[5]
-        rows.append(np.array([number, row[1], *between, row[6]]))
-        rows.append(np.array([*row[:6], number]))
-    return np.array(rows)
+    return _cut(table, lambda length: 2)
 
 
 def renumbered(table, rng):

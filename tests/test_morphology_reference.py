@@ -1,7 +1,7 @@
 """Cable lengths of real reconstructions against a reference library.
 
-The files are five real reconstructions that ship with the
-library navis (https://navis-org.github.io/navis) as examples; their unit does not matter.
+The files are five real reconstructions that ship with the library navis
+(https://navis-org.github.io/navis) as examples; their unit does not matter here.
 """
 
 import warnings

@@ -43,8 +43,8 @@ class Arbor:
     path_end_um : float64 (n,)
         The same to `end`.
     cable_start_um, cable_end_um : float64 (n,)
-        Where the segment begins and ends on the cable coordinate of the file, in
-        which the file's own sample-to-sample pieces lie one after another.
+        Where the segment begins and ends on the cable coordinate, in which segments
+        and the file's own sample-to-sample pieces lie one after another.
     first_piece, last_piece : int32 (n,)
         First and last piece of the file that the segment stands for.
     piece_number : int64 (m,)
@@ -52,7 +52,8 @@ class Arbor:
     piece_backward : bool (m,)
         True where the file runs the piece toward the soma.
     piece_bounds_um : float64 (m + 1,)
-        Cable coordinate of the piece boundaries, increasing from 0.
+        Cable coordinate of the piece boundaries, never decreasing, from 0: where the
+        samples stand beside the segments.
     """
 
     name: str

@@ -155,6 +155,35 @@ def _begin_after(section: _Section, along: np.ndarray, skip: float):
     )
 
 
+def _along_course(points: np.ndarray, kept: np.ndarray) -> np.ndarray:
+    """Where points stand on the straight pieces between kept ones, in um from the start.
+
+    Every point stands where it is nearest, but never before the point before it.
+    """
+    chord = np.diff(points[kept], axis=0)
+    square = (chord**2).sum(axis=1)
+    which = np.searchsorted(kept, np.arange(len(points)), side="right") - 1
+    which = np.minimum(which, len(chord) - 1)
+    away = points - points[kept][which]
+    part = (away * chord[which]).sum(axis=1) / np.where(square > 0, square, 1.0)[which]
+    part = np.clip(part, 0.0, 1.0)
+    part[-1] = 1.0
+    part = np.maximum.accumulate(which + part) - which
+    length = np.sqrt(square)
+    return (np.cumsum(length) - length)[which] + part * length[which]
+
+
+def _piece_bounds(along: np.ndarray, skip: float, course: np.ndarray) -> np.ndarray:
+    """Coordinates of a section's samples: those on the course, before it by length."""
+    if skip <= 0:
+        return course
+    first = along.size - course.size + 1
+    inside, outside = skip - along[first - 1], along[first] - skip
+    # The piece that leaves the soma keeps its proportions.
+    before = along[:first] - along[first - 1] - inside / outside * course[1]
+    return np.concatenate([before, course[1:]])
+
+
 def _cut(low: float, high: float, length: float, spacing: float, stop: float):
     """Fractions (0 to 1) at which a straight piece from path low to high is cut."""
     bounds = [0.0, 1.0]
@@ -236,18 +265,19 @@ class _Builder:
         self.within[section.samples] = at < skip + _TINY_UM if skip else False
         parent = self.last_segment[above] if above >= 0 else -1
         before = self.segments_n
-        base, piece = self.cable_um, self.pieces_n
+        bounds = self._add_segments(section, along, skip, path, parent)
         own = section.samples[len(section.samples) - len(lengths) :]
-        self._note_pieces(r.piece[own], r.backward[own], lengths)
-        self._add_segments(section, along, skip, path, parent, base, piece)
+        self._note_pieces(r.piece[own], r.backward[own], np.diff(bounds))
         grown = self.segments_n > before
         self.last_segment[section.samples] = self.segments_n - 1 if grown else parent
 
-    def _add_segments(self, section, along, skip, path, parent, base, piece) -> None:
+    def _add_segments(self, section, along, skip, path, parent) -> np.ndarray:
+        """Add a section's segments; return where its samples stand along them."""
         points, radii, inner = _begin_after(section, along, skip)
         if len(points) < 2:
-            return
+            return along
         kept = corners(points, radii)
+        bounds = _piece_bounds(along, skip, _along_course(points, kept))
         points, radii, inner = points[kept], radii[kept], inner[kept]
         chord, widen = np.diff(points, axis=0), np.diff(radii)
         kind = self.r.kind[section.samples[0]]
@@ -257,17 +287,17 @@ class _Builder:
         which, begin, end = _cut_all(from_soma, length, self.spacing_um, stop)
         n = which.size
         if n == 0:
-            return
-        low, span = inner[which], np.diff(inner)[which]
-        cable_begin, cable_end = low + begin * span, low + end * span
-        # Cable coordinates lead to pieces by the section's own boundaries.
+            return bounds
+        low, span = from_soma[which], np.diff(inner)[which]
+        path_begin, path_end = low + begin * span, low + end * span
+        low = (np.cumsum(length) - length)[which]
+        course_begin, course_end = low + begin * length[which], low + end * length[which]
         last = len(along) - 2
-        first_piece = np.searchsorted(along, cable_begin, side="right") - 1
+        first_piece = np.searchsorted(bounds, course_begin, side="right") - 1
         first_piece = np.minimum(np.maximum(first_piece, 0), last)
-        last_piece = np.searchsorted(along, cable_end, side="left") - 1
+        last_piece = np.searchsorted(bounds, course_end, side="left") - 1
         last_piece = np.minimum(np.maximum(last_piece, first_piece), last)
-        path_begin = path + cable_begin
-        path_end = path + cable_end
+        base = self.cable_um - bounds[0]
         self._add(
             points[which] + begin[:, None] * chord[which],
             points[which] + end[:, None] * chord[which],
@@ -278,11 +308,12 @@ class _Builder:
             path_end <= stop + 1e-9,
             path_begin,
             path_end,
-            base + cable_begin,
-            base + cable_end,
-            piece + first_piece,
-            piece + last_piece,
+            base + course_begin,
+            base + course_end,
+            self.pieces_n + first_piece,
+            self.pieces_n + last_piece,
         )
+        return bounds
 
     def arbor(self) -> Arbor:
         """Join everything."""

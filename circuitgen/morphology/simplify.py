@@ -17,10 +17,10 @@ def _deviation(points: np.ndarray, radii: np.ndarray) -> np.ndarray:
     chord = points[-1] - points[0]
     square = chord @ chord
     away = points[1:-1] - points[0]
-    fraction = (
-        np.clip(away @ chord / square, 0, 1) if square > 0 else np.zeros(len(away))
-    )
-    course = np.linalg.norm(away - fraction[:, None] * chord, axis=1)
+    fraction = away @ chord / square if square > 0 else np.zeros(len(away))
+    # Never back along the piece: a hairpin strays, however narrow it is.
+    forward = np.maximum.accumulate(np.clip(fraction, 0, 1))
+    course = np.linalg.norm(away - forward[:, None] * chord, axis=1)
     radius = np.abs(radii[1:-1] - radii[0] - fraction * (radii[-1] - radii[0]))
     return np.maximum(course / COURSE_TOLERANCE_UM, radius / RADIUS_TOLERANCE_UM)
 
