@@ -12,7 +12,7 @@ Rules, each counted in the findings when it is used:
 - A tree that the file roots elsewhere is rooted at its soma.
 - A root that is not soma is joined to the soma when it lies within 10 um of the soma's
   surface. Other loose pieces are kept when their root lies within 50 um of the joined
-  cable, path length running on across the gap; farther ones are dropped.
+  cable; farther ones are dropped. Path length runs on across a gap, cable does not.
 - A radius of zero or less takes the nearest ancestor's, or 0.1 um.
 """
 
