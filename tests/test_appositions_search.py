@@ -44,12 +44,12 @@ def assert_equal_to_brute_force(found, expected):
         np.testing.assert_allclose(sites[4], gap, atol=1e-6)
 
 
-@pytest.mark.parametrize("seed", range(6))
+@pytest.mark.parametrize("seed", range(3))
 @pytest.mark.parametrize(
     "case",
     [
         {},
-        {"wrap": True, "box_um": 70.0},
+        {"wrap": True, "box_um": 70.0, "cells": 3},
         {"autapses": True},
         {"max_gap_um": 0.0},
         {"max_gap_um": 20.0, "cells": 4},
@@ -71,7 +71,7 @@ def test_answer_does_not_depend_on_blocks_or_threads(wrap):
         np.random.default_rng(3), cells=40, box_um=90.0, wrap=wrap, max_gap_um=2.0
     )
     whole = search(scene)
-    assert sum(len(sites[0]) for sites in whole.values()) > 200
+    assert sum(len(sites[0]) for sites in whole.values()) > 60
     for blocks, threads in [(2, 1), (7, 2), (40, 3), (1, 8)]:
         assert search(scene, blocks=blocks, threads=threads) == whole
 

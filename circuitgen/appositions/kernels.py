@@ -17,11 +17,12 @@ from circuitgen.core.compilation import kernel
 
 # Capsules of all arbors, one after another. Arrays by segment: start, end (n, 3),
 # radii (n,), index of the segment in its arbor. `first` (arbors + 1): where each
-# arbor begins. Axons also come in runs of neighbours with a bounding sphere each.
+# arbor begins. Axons also come in groups of a few connected segments, which one capsule
+# holds: group_bounds (groups + 1), its ends and radius.
 Axons = namedtuple(
     "Axons",
-    "first start end start_radius end_radius segment run_first run_bounds run_center"
-    " run_radius",
+    "first start end start_radius end_radius segment group_first group_bounds"
+    " group_start group_end group_radius",
 )
 Targets = namedtuple("Targets", "first start end start_radius end_radius segment kind")
 # Cells: arbor (n,), position (n, 3), turn (n, 2) = cosine and sine of the azimuth,
@@ -45,11 +46,11 @@ Hits = namedtuple("Hits", "owner axon target gap axon_fraction target_fraction")
 Sites = namedtuple("Sites", "axon target axon_fraction target_fraction gap")
 Pairs = namedtuple("Pairs", "post pre count")
 
-# Memory that one task uses again and again: segment (2, 3), the placed axon segment, its
-# middle and half (3,), marks of one run of rows, list of the rows found.
-Work = namedtuple("Work", "segment middle half near found")
+# Memory that one task uses again and again: segment (2, 3), a placed axon segment, its
+# middle and half (3,), marks of one run of rows, rows found around a group of segments
+# with a copy of their shapes, and positions in that list of those found around one.
+Work = namedtuple("Work", "segment middle half near found shapes few")
 
-RUN_LENGTH = 16
 _OWN_KINDS = np.uint8(12)  # an autapse may sit on basal and apical dendrite only
 _PARALLEL = 1e-9
 _SHORT_SORT = 16
@@ -377,7 +378,7 @@ def _test(axons, targets, placed, layer, rules, cells, pre, axon, work, m, hits,
     a_radius = axons.start_radius[axon]
     a_taper = axons.end_radius[axon] - a_radius
     for k in range(m):
-        item = work.found[k]
+        item = work.found[work.few[k]]
         owner, row, kind = layer.owner[item], layer.row[item], layer.kind[item]
         post = cells[owner]
         own = post == pre and not (rules.autapses and kind & _OWN_KINDS)
@@ -430,10 +431,10 @@ def _into_box(step, voxels, period):
 
 @kernel
 def _look(layer, reach, work):
-    """List the rows of a layer that may be close to the placed axon segment.
+    """List the rows of a layer that may be close to the capsule in `work.segment`.
 
-    `reach` is the axon's radius plus the largest gap and the slack. Returns how many
-    rows of the layer stand in `work.found`.
+    `reach` is the capsule's radius plus the largest gap and the slack. Returns how many
+    rows of the layer stand in `work.found`; `work.middle` is left at the capsule's.
     """
     segment, middle, half, grid = work.segment, work.middle, work.half, layer.grid
     _middle_of(segment[0], segment[1], grid, middle)
@@ -462,38 +463,64 @@ def _look(layer, reach, work):
                     middle, half, half_length, reach, layer.shapes, low, high, work.near
                 )
                 m = _list_marked(work.near, high - low, low, work.found, m)
+    middle[0], middle[1] = x_middle, y_middle
     return m
 
 
 @kernel
-def _clear_of(center, radius, turn, position, grid, place):
-    """Tell whether a sphere of the arbor's frame misses the open sides of the grid."""
-    _place(center, turn, position, place)
+def _copy_shapes(layer, m, work):
+    """Copy the shapes of the m rows found, each from its copy nearest to the group."""
+    shapes, middle, period = work.shapes, work.middle, layer.grid.period
+    for k in range(m):
+        row = work.found[k]
+        for axis in range(8):
+            shapes[axis, k] = layer.shapes[axis, row]
+        shapes[0, k] += _shift(period[0], middle[0] - shapes[0, k])
+        shapes[1, k] += _shift(period[1], middle[1] - shapes[1, k])
+
+
+@kernel
+def _narrow(axons, placed, rules, pre, axon, origin, m, work):
+    """List in `work.few` which of the m rows copied may be close to one segment.
+
+    `origin` leads from the circuit frame to that of the copied shapes.
+    """
+    segment, middle, half = work.segment, work.middle, work.half
+    turn, position = placed.turn[pre], placed.position[pre]
+    _place(axons.start[axon], turn, position, segment[0])
+    _place(axons.end[axon], turn, position, segment[1])
     square = 0.0
     for axis in range(3):
-        if grid.period[axis] == 0.0:
-            value = place[axis] - grid.origin[axis]
-            beyond = max(-value, value - grid.shape[axis] * grid.size[axis], 0.0)
-            square += beyond * beyond
-    return square > radius * radius
+        middle[axis] = 0.5 * (segment[0, axis] + segment[1, axis]) - origin[axis]
+        half[axis] = 0.5 * (segment[1, axis] - segment[0, axis])
+        square += float(half[axis]) ** 2
+    reach = max(axons.start_radius[axon], axons.end_radius[axon])
+    reach = np.float32(reach + rules.max_gap + rules.slack)
+    half_length = np.float32(np.sqrt(square))
+    _mark_near(middle, half, half_length, reach, work.shapes, 0, m, work.near)
+    return _list_marked(work.near, m, 0, work.few, 0)
 
 
 @kernel
 def _collect(axons, layers, placed, rules, cells, pre, work, hits):
-    """Collect the hits of one cell's axon in all layers."""
-    segment, n = work.segment, 0
+    """Collect the hits of one cell's axon in all layers, group by group."""
+    segment, n, origin = work.segment, 0, np.zeros(3)
     arbor, turn, position = placed.arbor[pre], placed.turn[pre], placed.position[pre]
-    for run in range(axons.run_first[arbor], axons.run_first[arbor + 1]):
-        center, radius = axons.run_center[run], axons.run_radius[run] + rules.slack
+    for group in range(axons.group_first[arbor], axons.group_first[arbor + 1]):
+        reach = axons.group_radius[group] + rules.max_gap + rules.slack
         for targets, layer in layers:
-            if _clear_of(center, radius, turn, position, layer.grid, segment[0]):
+            _place(axons.group_start[group], turn, position, segment[0])
+            _place(axons.group_end[group], turn, position, segment[1])
+            m = _look(layer, reach, work)
+            if m == 0:
                 continue
-            for axon in range(axons.run_bounds[run], axons.run_bounds[run + 1]):
-                _place(axons.start[axon], turn, position, segment[0])
-                _place(axons.end[axon], turn, position, segment[1])
-                reach = max(axons.start_radius[axon], axons.end_radius[axon])
-                m = _look(layer, reach + rules.max_gap + rules.slack, work)
-                if m:
+            _copy_shapes(layer, m, work)
+            for axis in range(3):
+                middle = 0.5 * (segment[0, axis] + segment[1, axis])
+                origin[axis] = middle - work.middle[axis]
+            for axon in range(axons.group_bounds[group], axons.group_bounds[group + 1]):
+                few = _narrow(axons, placed, rules, pre, axon, origin, m, work)
+                if few:
                     hits, n = _test(
                         axons,
                         targets,
@@ -504,7 +531,7 @@ def _collect(axons, layers, placed, rules, cells, pre, work, hits):
                         pre,
                         axon,
                         work,
-                        m,
+                        few,
                         hits,
                         n,
                     )
@@ -580,8 +607,8 @@ def _new_sites(size):
 def _new_work(layers):
     """Allocate a task's memory.
 
-    No run is longer than the longest column of voxels, and one axon segment finds no
-    row twice.
+    No run is longer than the longest column of voxels, and one group of segments finds
+    no row twice. Memory that is never touched costs nothing.
     """
     rows = longest = 0
     for _, layer in layers:
@@ -590,7 +617,9 @@ def _new_work(layers):
         np.zeros((2, 3)),
         np.zeros(3, np.float32),
         np.zeros(3, np.float32),
-        np.zeros(8 * (longest // 8 + 2), np.uint8),
+        np.zeros(8 * (rows // 8 + 2), np.uint8),
+        np.zeros(rows, np.int32),
+        np.zeros((8, rows), np.float32),
         np.zeros(rows, np.int32),
     )
 

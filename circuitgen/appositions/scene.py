@@ -7,12 +7,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from circuitgen.appositions.kernels import RUN_LENGTH, Axons, Placed, Targets
+from circuitgen.appositions.kernels import Axons, Placed, Targets
 from circuitgen.morphology.arbor import Arbor, Kind
 
 # Bits of the kinds of target; a presynaptic type's mask is a sum of them.
 TARGET_BITS = {"soma": 1, "axon_initial_segment": 2, "basal": 4, "apical": 8}
 TARGET_NAMES = {bit: name for name, bit in TARGET_BITS.items()}
+# Segments that are looked up together (see DEVELOPERS.md).
+GROUP_LENGTH = 4
 # Radii, in medians of all targets, at which layers of the search are parted.
 _LAYER_FACTORS = (2.0, 6.0)
 _KIND_BITS = np.zeros(8, np.uint8)
@@ -107,34 +109,46 @@ def pack_targets(arbors: Sequence[Arbor]) -> tuple[Targets, ...]:
     return tuple(layer for layer in layers if layer.kind.size)
 
 
-def _run_spheres(start, end, radius, bounds) -> tuple[np.ndarray, np.ndarray]:
-    """Centre (runs, 3) and radius (runs,) of a sphere around every run of capsules."""
-    if bounds.size < 2:
-        return np.zeros((0, 3)), np.zeros(0)
-    low = np.minimum.reduceat(np.minimum(start, end), bounds[:-1])
-    high = np.maximum.reduceat(np.maximum(start, end), bounds[:-1])
-    center = (low + high) / 2
-    each = np.repeat(center, np.diff(bounds), axis=0)
-    far = np.maximum(
-        np.linalg.norm(start - each, axis=1), np.linalg.norm(end - each, axis=1)
+def _groups_of(start: np.ndarray, end: np.ndarray) -> np.ndarray:
+    """Cut one arbor's axon into groups of connected segments; return their bounds."""
+    if not len(start):
+        return np.zeros(0, int)
+    broken = np.flatnonzero((start[1:] != end[:-1]).any(axis=1)) + 1
+    stretches = np.concatenate([[0], broken, [len(start)]])
+    return np.concatenate(
+        [
+            np.arange(low, high, GROUP_LENGTH)
+            for low, high in zip(stretches[:-1], stretches[1:], strict=True)
+        ]
     )
-    return center, np.maximum.reduceat(far + radius, bounds[:-1])
+
+
+def _group_radii(start, end, radius, bounds) -> np.ndarray:
+    """Radius of a capsule from a group's first start to its last end that holds it."""
+    sizes = np.diff(bounds)
+    origin = np.repeat(start[bounds[:-1]], sizes, axis=0)
+    chord = np.repeat(end[bounds[1:] - 1], sizes, axis=0) - origin
+    square = np.maximum((chord**2).sum(axis=1), 1e-12)
+    far = np.zeros(len(start))
+    for points in (start, end):
+        away = points - origin
+        along = np.clip((away * chord).sum(axis=1) / square, 0, 1)
+        side = np.linalg.norm(away - along[:, None] * chord, axis=1)
+        far = np.maximum(far, side)
+    return np.maximum.reduceat(far + radius, bounds[:-1]) if sizes.size else np.zeros(0)
 
 
 def pack_axons(arbors: Sequence[Arbor]) -> Axons:
-    """Pack the axon capsules of all arbors, in runs of neighbours."""
+    """Pack the axon capsules of all arbors, in groups of connected segments."""
     chosen = [np.flatnonzero(arbor.kind == Kind.AXON) for arbor in arbors]
     first = _first(chosen)
     start, end = _packed(arbors, chosen, "start_um"), _packed(arbors, chosen, "end_um")
     start_radius = _packed(arbors, chosen, "start_radius_um")
     end_radius = _packed(arbors, chosen, "end_radius_um")
+    spans = list(zip(first[:-1], first[1:], strict=True))
+    begins = [low + _groups_of(start[low:high], end[low:high]) for low, high in spans]
+    bounds = np.concatenate([*begins, first[-1:]]).astype(np.int64)
     radius = np.maximum(start_radius, end_radius)
-    begins = [
-        np.arange(low, high, RUN_LENGTH)
-        for low, high in zip(first[:-1], first[1:], strict=True)
-    ]
-    bounds = np.concatenate([*begins, first[-1:]])
-    center, run_radius = _run_spheres(start, end, radius, bounds)
     return Axons(
         first=first,
         start=start,
@@ -142,10 +156,11 @@ def pack_axons(arbors: Sequence[Arbor]) -> Axons:
         start_radius=start_radius,
         end_radius=end_radius,
         segment=_segments(chosen),
-        run_first=_first(begins),
-        run_bounds=bounds,
-        run_center=center,
-        run_radius=run_radius,
+        group_first=_first(begins),
+        group_bounds=bounds,
+        group_start=start[bounds[:-1]],
+        group_end=end[bounds[1:] - 1],
+        group_radius=_group_radii(start, end, radius, bounds),
     )
 
 
