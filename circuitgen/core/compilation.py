@@ -66,6 +66,8 @@ def kernel(function):
     )(function)
 
 
-def is_compiled() -> bool:
-    """Tell whether an earlier run left its machine code for this very release."""
-    return CACHE_FOLDER is not None and any(CACHE_FOLDER.rglob("*.nbi"))
+def is_compiled(kernel_name: str) -> bool:
+    """Tell whether an earlier run left the machine code of a kernel of this release."""
+    if CACHE_FOLDER is None:
+        return False
+    return any(CACHE_FOLDER.rglob(f"kernels.{kernel_name}-*.nbi"))
