@@ -33,27 +33,31 @@ Placed = namedtuple("Placed", "arbor position turn mask")
 Grid = namedtuple("Grid", "origin size shape period")
 # Targets of some cells, sorted by voxel; voxel v holds rows first[v] to first[v + 1].
 # `shapes` (8, n) holds single-precision copies relative to the grid's origin: middle,
-# half, half length, radius; `owner` and `row` lead to the cell in the list and to the
-# row in Targets. `reach`: the largest half length plus radius; `longest`: the largest
-# number of rows in a column of voxels along z.
-Layer = namedtuple("Layer", "grid first shapes owner row kind reach longest")
+# half, half length, radius. `exact` (n, 8) holds the placed capsule in double precision:
+# start, way to the end, radius at the start, its change to the end. `owner` is the cell
+# in the list, `segment` the segment of its arbor. `reach`: the largest half length plus
+# radius; `most`: more rows than one group of axon segments can be near to.
+Layer = namedtuple("Layer", "grid first shapes exact owner segment kind reach most")
 # Largest gap, least spacing, room for the errors of single precision, autapses allowed.
 Rules = namedtuple("Rules", "max_gap min_spacing slack autapses")
-# What one axon came close to: cell in the block, row of the axon, segment of the target
-# in its arbor, gap, and the fractions along both segments.
-Hits = namedtuple("Hits", "owner axon target gap axon_fraction target_fraction")
+# What the axons of a task came close to: presynaptic cell of the task, cell of the
+# layer, row of the axon, segment of the target in its arbor, gap, and the fractions along
+# both segments.
+Hits = namedtuple("Hits", "pre owner axon target gap axon_fraction target_fraction")
 # Pairs with at least one site, and their sites one pair after another, closest first.
 Sites = namedtuple("Sites", "axon target axon_fraction target_fraction gap")
 Pairs = namedtuple("Pairs", "post pre count")
 
-# Memory that one task uses again and again: segment (2, 3), a placed axon segment, its
-# middle and half (3,), marks of one run of rows, rows found around a group of segments
-# with a copy of their shapes, and positions in that list of those found around one.
-Work = namedtuple("Work", "segment middle half near found shapes few")
+# Memory that one task uses again and again: segment (2, 3), a placed axon segment,
+# origin of the shapes copied, middle and half (3,) of the segment, marks of one run of
+# rows, rows found around a group of segments with a copy of their shapes, and positions
+# in that list of those found around one segment.
+Work = namedtuple("Work", "segment origin middle half near found shapes few")
 
 _OWN_KINDS = np.uint8(12)  # an autapse may sit on basal and apical dendrite only
 _PARALLEL = 1e-9
 _SHORT_SORT = 16
+_TILE_UM = 16.0
 
 
 @kernel
@@ -200,16 +204,18 @@ def fill_layer(targets, placed, cells, layer):
             place = layer.first[voxel]
             square = 0.0
             for axis in range(3):
-                half = 0.5 * (end[axis] - start[axis])
+                way = end[axis] - start[axis]
                 layer.shapes[axis, place] = middle[axis]
-                layer.shapes[3 + axis, place] = half
-                square += half * half
-            layer.shapes[6, place] = np.sqrt(square)
-            layer.shapes[7, place] = max(
-                targets.start_radius[row], targets.end_radius[row]
-            )
-            layer.owner[place], layer.row[place] = index, row
-            layer.kind[place] = targets.kind[row]
+                layer.shapes[3 + axis, place] = 0.5 * way
+                layer.exact[place, axis] = start[axis]
+                layer.exact[place, 3 + axis] = way
+                square += way * way
+            first, last = targets.start_radius[row], targets.end_radius[row]
+            layer.shapes[6, place] = 0.5 * np.sqrt(square)
+            layer.shapes[7, place] = max(first, last)
+            layer.exact[place, 6], layer.exact[place, 7] = first, last - first
+            layer.owner[place], layer.kind[place] = index, targets.kind[row]
+            layer.segment[place] = targets.segment[row]
 
 
 @kernel
@@ -326,6 +332,7 @@ def _new_hits(size):
         np.zeros(size, np.int32),
         np.zeros(size, np.int32),
         np.zeros(size, np.int32),
+        np.zeros(size, np.int32),
         np.zeros(size, np.float64),
         np.zeros(size, np.float64),
         np.zeros(size, np.float64),
@@ -335,6 +342,7 @@ def _new_hits(size):
 @kernel
 def _grow_hits(hits):
     return Hits(
+        _longer(hits.pre),
         _longer(hits.owner),
         _longer(hits.axon),
         _longer(hits.target),
@@ -368,42 +376,35 @@ def _shift(period, apart):
 
 
 @kernel
-def _test(axons, targets, placed, layer, rules, cells, pre, axon, work, m, hits, n):
-    """Decide the m listed rows in double precision; append those close enough."""
+def _test(axons, layer, rules, own, mask, pre, axon, work, m, hits, n):
+    """Decide the m listed rows in double precision; append those close enough.
+
+    `own` is the presynaptic cell's place in the layer's list of cells, -1 if absent.
+    """
     while hits.owner.size < n + m:
         hits = _grow_hits(hits)
-    mask, segment = placed.mask[pre], work.segment
+    segment, exact, period = work.segment, layer.exact, layer.grid.period
     ax, ay, az = segment[0, 0], segment[0, 1], segment[0, 2]
     ux, uy, uz = segment[1, 0] - ax, segment[1, 1] - ay, segment[1, 2] - az
     a_radius = axons.start_radius[axon]
     a_taper = axons.end_radius[axon] - a_radius
     for k in range(m):
-        item = work.found[work.few[k]]
-        owner, row, kind = layer.owner[item], layer.row[item], layer.kind[item]
-        post = cells[owner]
-        own = post == pre and not (rules.autapses and kind & _OWN_KINDS)
-        if own or not kind & mask:
+        row = work.found[work.few[k]]
+        owner, kind = layer.owner[row], layer.kind[row]
+        if owner == own and not (rules.autapses and kind & _OWN_KINDS):
             continue
-        cosine, sine = placed.turn[post, 0], placed.turn[post, 1]
-        x, y, z = targets.start[row, 0], targets.start[row, 1], targets.start[row, 2]
-        cx = cosine * x - sine * y + placed.position[post, 0]
-        cy = sine * x + cosine * y + placed.position[post, 1]
-        cz = z + placed.position[post, 2]
-        x, y = targets.end[row, 0] - x, targets.end[row, 1] - y
-        vx, vy, vz = (
-            cosine * x - sine * y,
-            sine * x + cosine * y,
-            targets.end[row, 2] - z,
-        )
-        cx += _shift(layer.grid.period[0], ax + 0.5 * ux - cx - 0.5 * vx)
-        cy += _shift(layer.grid.period[1], ay + 0.5 * uy - cy - 0.5 * vy)
+        if not kind & mask:
+            continue
+        cx, cy, cz = exact[row, 0], exact[row, 1], exact[row, 2]
+        vx, vy, vz = exact[row, 3], exact[row, 4], exact[row, 5]
+        cx += _shift(period[0], ax + 0.5 * ux - cx - 0.5 * vx)
+        cy += _shift(period[1], ay + 0.5 * uy - cy - 0.5 * vy)
         square, s, t = _closest(ax, ay, az, ux, uy, uz, cx, cy, cz, vx, vy, vz)
-        b_radius = targets.start_radius[row]
-        b_radius += t * (targets.end_radius[row] - b_radius)
+        b_radius = exact[row, 6] + t * exact[row, 7]
         gap = max(np.sqrt(square) - a_radius - s * a_taper - b_radius, 0.0)
         if gap <= rules.max_gap:
-            hits.owner[n], hits.axon[n] = owner, axon
-            hits.target[n], hits.gap[n] = targets.segment[row], gap
+            hits.pre[n], hits.owner[n], hits.axon[n] = pre, owner, axon
+            hits.target[n], hits.gap[n] = layer.segment[row], gap
             hits.axon_fraction[n], hits.target_fraction[n] = s, t
             n += 1
     return hits, n
@@ -480,13 +481,12 @@ def _copy_shapes(layer, m, work):
 
 
 @kernel
-def _narrow(axons, placed, rules, pre, axon, origin, m, work):
+def _narrow(axons, turn, position, rules, axon, origin, m, work):
     """List in `work.few` which of the m rows copied may be close to one segment.
 
     `origin` leads from the circuit frame to that of the copied shapes.
     """
     segment, middle, half = work.segment, work.middle, work.half
-    turn, position = placed.turn[pre], placed.position[pre]
     _place(axons.start[axon], turn, position, segment[0])
     _place(axons.end[axon], turn, position, segment[1])
     square = 0.0
@@ -502,56 +502,80 @@ def _narrow(axons, placed, rules, pre, axon, origin, m, work):
 
 
 @kernel
-def _collect(axons, layers, placed, rules, cells, pre, work, hits):
-    """Collect the hits of one cell's axon in all layers, group by group."""
-    segment, n, origin = work.segment, 0, np.zeros(3)
-    arbor, turn, position = placed.arbor[pre], placed.turn[pre], placed.position[pre]
-    for group in range(axons.group_first[arbor], axons.group_first[arbor + 1]):
-        reach = axons.group_radius[group] + rules.max_gap + rules.slack
-        for targets, layer in layers:
-            _place(axons.group_start[group], turn, position, segment[0])
-            _place(axons.group_end[group], turn, position, segment[1])
-            m = _look(layer, reach, work)
-            if m == 0:
-                continue
-            _copy_shapes(layer, m, work)
-            for axis in range(3):
-                middle = 0.5 * (segment[0, axis] + segment[1, axis])
-                origin[axis] = middle - work.middle[axis]
-            for axon in range(axons.group_bounds[group], axons.group_bounds[group + 1]):
-                few = _narrow(axons, placed, rules, pre, axon, origin, m, work)
-                if few:
-                    hits, n = _test(
-                        axons,
-                        targets,
-                        placed,
-                        layer,
-                        rules,
-                        cells,
-                        pre,
-                        axon,
-                        work,
-                        few,
-                        hits,
-                        n,
-                    )
+def _collect(axons, layer, placed, rules, own, cell, pre, group, work, hits, n):
+    """Collect the hits of one group of segments of a cell's axon in one layer."""
+    segment, origin = work.segment, work.origin
+    turn, position, mask = placed.turn[cell], placed.position[cell], placed.mask[cell]
+    reach = axons.group_radius[group] + rules.max_gap + rules.slack
+    _place(axons.group_start[group], turn, position, segment[0])
+    _place(axons.group_end[group], turn, position, segment[1])
+    m = _look(layer, reach, work)
+    if m == 0:
+        return hits, n
+    _copy_shapes(layer, m, work)
+    for axis in range(3):
+        middle = 0.5 * (segment[0, axis] + segment[1, axis])
+        origin[axis] = middle - work.middle[axis]
+    for axon in range(axons.group_bounds[group], axons.group_bounds[group + 1]):
+        few = _narrow(axons, turn, position, rules, axon, origin, m, work)
+        if few:
+            hits, n = _test(
+                axons, layer, rules, own, mask, pre, axon, work, few, hits, n
+            )
     return hits, n
 
 
 @kernel
-def _group_by_owner(hits, n, first, order):
-    """Order hits by cell of the block; hits of cell i are order[first[i]:first[i+1]]."""
+def _list_groups(axons, placed, pre_cells, grid):
+    """List the axon groups of some cells in order of place, tile by tile.
+
+    Neighbours in the list look at the same targets, which so stay in the processor's
+    cache. Returns the cell (counting within pre_cells) and the group of every entry.
+    """
+    total = 0
+    for cell in pre_cells:
+        arbor = placed.arbor[cell]
+        total += axons.group_first[arbor + 1] - axons.group_first[arbor]
+    pre, group = np.zeros(total, np.int32), np.zeros(total, np.int32)
+    key, start = np.zeros(total, np.int64), np.zeros(3)
+    n = 0
+    for index in range(pre_cells.size):
+        cell = pre_cells[index]
+        arbor, turn, position = (
+            placed.arbor[cell],
+            placed.turn[cell],
+            placed.position[cell],
+        )
+        for item in range(axons.group_first[arbor], axons.group_first[arbor + 1]):
+            _place(axons.group_start[item], turn, position, start)
+            for axis in range(3):
+                value = _wrapped(start[axis] - grid.origin[axis], grid.period[axis])
+                step = min(max(np.floor(value / _TILE_UM), -1.0), 4094.0) + 1.0
+                key[n] = key[n] * 4096 + np.int64(step)
+            pre[n], group[n] = index, item
+            n += 1
+    order = np.argsort(key)
+    return pre[order], group[order]
+
+
+@kernel
+def _sorted_by(values, chosen, first, order):
+    """Order `chosen` items by a small whole number; those of v: first[v] to first[v+1].
+
+    Stable; `first` has one entry more than there are numbers.
+    """
     first[:] = 0
-    for i in range(n):
-        first[hits.owner[i] + 1] += 1
-    for cell in range(first.size - 1):
-        first[cell + 1] += first[cell]
-    for i in range(n - 1, -1, -1):
-        order[first[hits.owner[i] + 1] - 1] = i
-        first[hits.owner[i] + 1] -= 1
-    for cell in range(first.size - 1):
-        first[cell] = first[cell + 1]
-    first[first.size - 1] = n
+    for item in chosen:
+        first[values[item] + 1] += 1
+    for v in range(first.size - 1):
+        first[v + 1] += first[v]
+    for i in range(chosen.size):
+        v = values[chosen[i]]
+        order[first[v]] = chosen[i]
+        first[v] += 1
+    for v in range(first.size - 1, 0, -1):
+        first[v] = first[v - 1]
+    first[0] = 0
 
 
 @kernel
@@ -605,42 +629,67 @@ def _new_sites(size):
 
 @kernel
 def _new_work(layers):
-    """Allocate a task's memory.
-
-    No run is longer than the longest column of voxels, and one group of segments finds
-    no row twice. Memory that is never touched costs nothing.
-    """
-    rows = longest = 0
-    for _, layer in layers:
-        rows, longest = max(rows, layer.owner.size), max(longest, layer.longest)
+    """Allocate the memory that a task uses again and again."""
+    most = 0
+    for layer in layers:
+        most = max(most, layer.most)
     return Work(
         np.zeros((2, 3)),
+        np.zeros(3),
         np.zeros(3, np.float32),
         np.zeros(3, np.float32),
-        np.zeros(8 * (rows // 8 + 2), np.uint8),
-        np.zeros(rows, np.int32),
-        np.zeros((8, rows), np.float32),
-        np.zeros(rows, np.int32),
+        np.zeros(8 * (most // 8 + 2), np.uint8),
+        np.zeros(most, np.int32),
+        np.zeros((8, most), np.float32),
+        np.zeros(most, np.int32),
     )
+
+
+@kernel
+def _all_hits(axons, layers, placed, rules, cells, pre_cells):
+    """Collect the hits of all axons of a task, in order of place."""
+    work, hits, n = _new_work(layers), _new_hits(4096), 0
+    own = np.searchsorted(cells, pre_cells)
+    for i in range(own.size):
+        if own[i] == cells.size or cells[own[i]] != pre_cells[i]:
+            own[i] = -1
+    pre, group = _list_groups(axons, placed, pre_cells, layers[0].grid)
+    for i in range(pre.size):
+        for layer in layers:
+            hits, n = _collect(
+                axons,
+                layer,
+                placed,
+                rules,
+                own[pre[i]],
+                pre_cells[pre[i]],
+                pre[i],
+                group[i],
+                work,
+                hits,
+                n,
+            )
+    return hits, n
 
 
 @kernel
 def search(axons, layers, placed, rules, cells, pre_cells):
     """Find the appositions of the axons of `pre_cells` on the targets of `cells`.
 
-    `layers` is a tuple of (Targets, Layer) made for `cells`. Returns Pairs (by
-    presynaptic cell in the order given, then in the order of `cells`) and their Sites.
+    `layers` is a tuple of Layer made for `cells`. Returns Pairs (by presynaptic cell
+    in the order given, then in the order of `cells`) and their Sites.
     """
-    work = _new_work(layers)
-    hits, sites, sites_n = _new_hits(1024), _new_sites(4096), 0
-    post = np.zeros(1024, np.int32)
-    pre_out, count = np.zeros(1024, np.int32), np.zeros(1024, np.int32)
-    first, pairs_n = np.zeros(cells.size + 1, np.int64), 0
-    for pre in pre_cells:
-        hits, n = _collect(axons, layers, placed, rules, cells, pre, work, hits)
-        order = np.zeros(n, np.int64)
-        _group_by_owner(hits, n, first, order)
-        place = _axon_places(axons, hits, n)
+    hits, n = _all_hits(axons, layers, placed, rules, cells, pre_cells)
+    place = _axon_places(axons, hits, n)
+    by_pre, pre_first = np.zeros(n, np.int64), np.zeros(pre_cells.size + 1, np.int64)
+    _sorted_by(hits.pre, np.arange(n), pre_first, by_pre)
+    sites, sites_n, pairs_n = _new_sites(4096), 0, 0
+    post, pre_out = np.zeros(1024, np.int32), np.zeros(1024, np.int32)
+    count, first = np.zeros(1024, np.int32), np.zeros(cells.size + 1, np.int64)
+    order = np.zeros(n, np.int64)
+    for pre in range(pre_cells.size):
+        mine = by_pre[pre_first[pre] : pre_first[pre + 1]]
+        _sorted_by(hits.owner, mine, first, order)
         for owner in range(cells.size):
             low, high = first[owner], first[owner + 1]
             if low == high:
@@ -652,7 +701,7 @@ def search(axons, layers, placed, rules, cells, pre_cells):
             )
             if pairs_n == post.size:
                 post, pre_out, count = _longer(post), _longer(pre_out), _longer(count)
-            post[pairs_n], pre_out[pairs_n] = cells[owner], pre
+            post[pairs_n], pre_out[pairs_n] = cells[owner], pre_cells[pre]
             count[pairs_n] = kept
             pairs_n += 1
     return (

@@ -11,9 +11,9 @@ import numpy as np
 from circuitgen.appositions import kernels
 from circuitgen.appositions.scene import Scene
 
-_VOXEL_SHARE = 1.0
+_VOXEL_SHARE = 1.4
 _MOST_VOXELS = 64_000_000
-_CELLS_PER_TASK = 32
+_CELLS_PER_TASK = 48
 # Largest relative error of a single-precision coordinate, with room for a few sums.
 _SINGLE_ERROR = 1e-6
 
@@ -77,6 +77,23 @@ def _make_grid(scene: Scene, cells: np.ndarray, reach_um: float) -> kernels.Grid
     return kernels.Grid(origin=low, size=sizes, shape=shape, period=period)
 
 
+def _most_rows(scene: Scene, grid: kernels.Grid, first, reach_um: float) -> int:
+    """Bound the rows that one group of axon segments can be near to.
+
+    A group looks at no more columns of voxels than its reach spans, and at no more
+    rows of each than the fullest column holds.
+    """
+    axons = scene.axons
+    if not axons.group_radius.size:
+        return 0
+    half = np.linalg.norm(axons.group_end - axons.group_start, axis=1) / 2
+    extent = (half + axons.group_radius).max() + reach_um + scene.max_gap_um + 1.0
+    columns = np.prod(np.floor(2 * extent / grid.size[:2]) + 2)
+    depth = grid.shape[2]
+    fullest = np.diff(first[depth - 1 :: depth], prepend=0).max()
+    return int(columns * fullest)
+
+
 def _make_layer(scene, targets, cells) -> kernels.Layer:
     """Sort the targets of one layer by voxel."""
     radius = np.maximum(targets.start_radius, targets.end_radius)
@@ -90,11 +107,12 @@ def _make_layer(scene, targets, cells) -> kernels.Layer:
         grid=grid,
         first=first,
         shapes=np.zeros((8, n), np.float32),
+        exact=np.zeros((n, 8)),
         owner=np.zeros(n, np.int32),
-        row=np.zeros(n, np.int32),
+        segment=np.zeros(n, np.int32),
         kind=np.zeros(n, np.uint8),
         reach=reach_um,
-        longest=int(np.diff(first[grid.shape[2] - 1 :: grid.shape[2]], prepend=0).max()),
+        most=min(n, _most_rows(scene, grid, first, reach_um)),
     )
     kernels.fill_layer(targets, scene.placed, cells, layer)
     return layer
@@ -102,7 +120,7 @@ def _make_layer(scene, targets, cells) -> kernels.Layer:
 
 def _slack_um(scene: Scene, layers) -> float:
     """Room for the rounding of single-precision coordinates in the widest layer."""
-    extents = [(layer.grid.shape * layer.grid.size).max() for _, layer in layers]
+    extents = [(layer.grid.shape * layer.grid.size).max() for layer in layers]
     return _SINGLE_ERROR * max(extents)
 
 
@@ -132,7 +150,7 @@ def reachable_cells(scene: Scene, pre_cells: np.ndarray) -> np.ndarray:
 def index_targets(scene: Scene, cells: np.ndarray) -> TargetIndex:
     """Sort the targets of `cells` (increasing ids) by voxel."""
     cells = np.asarray(cells, dtype=np.int64)
-    layers = tuple((part, _make_layer(scene, part, cells)) for part in scene.targets)
+    layers = tuple(_make_layer(scene, part, cells) for part in scene.targets)
     return TargetIndex(scene, cells, layers)
 
 

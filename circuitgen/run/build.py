@@ -162,7 +162,7 @@ def build(
         if folder.begin(mark):
             _say(f"continuing the unfinished run in {folder.unfinished}")
         if not is_compiled("search"):
-            _say("compiling kernels, once for this version: the first steps take about 25 s longer")
+            _say("compiling kernels, once for this version: about 25 s in all")
         summary = _write_all(spec, folder, threads or os.cpu_count() or 1, watch)
         write_provenance(folder.unfinished / PROVENANCE, spec, inputs, watch, summary)
         folder.finish()
