@@ -41,7 +41,7 @@ Layer = namedtuple("Layer", "grid first shapes exact owner segment kind reach mo
 # Largest gap, least spacing, room for the errors of single precision, autapses allowed.
 Rules = namedtuple("Rules", "max_gap min_spacing slack autapses")
 # What the axons of a task came close to: presynaptic cell of the task, cell of the
-# layer, row of the axon, segment of the target in its arbor, gap, and the fractions along
+# layer, row of the axon, segment of the target in its arbor, gap, and fractions along
 # both segments.
 Hits = namedtuple("Hits", "pre owner axon target gap axon_fraction target_fraction")
 # Pairs with at least one site, and their sites one pair after another, closest first.

@@ -32,9 +32,9 @@ class SiteStore:
     second search would take as long as the first.
     """
 
-    def __init__(self, circuit: Circuit, folder: Path, most=AXON_SEGMENTS_PER_BLOCK):
+    def __init__(self, circuit: Circuit, folder: Path):
         self._circuit, self._folder = circuit, folder
-        self.bounds = block_bounds(circuit, most)
+        self.bounds = block_bounds(circuit, AXON_SEGMENTS_PER_BLOCK)
 
     def path(self, block: int) -> Path:
         """Return the file of a block."""
