@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 from oracles_appositions import segment_distance
 from scipy.optimize import minimize
 
-from circuitgen.appositions.kernels import segment_distances
+from circuitgen.appositions.distance_kernels import segment_distances
 
 
 def distances(a, b, c, d):

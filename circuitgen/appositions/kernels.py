@@ -9,213 +9,16 @@ depends on how the work was cut into blocks.
 
 from __future__ import annotations
 
-from collections import namedtuple
-
 import numpy as np
 
+from circuitgen.appositions.distance_kernels import closest
+from circuitgen.appositions.index_kernels import middle_of, place, wrapped
+from circuitgen.appositions.records import Hits, Pairs, Sites, Work
+from circuitgen.appositions.thinning_kernels import sort_hits, sorted_by, thin
 from circuitgen.core.compilation import kernel
 
-# Capsules of all arbors, one after another. Arrays by segment: start, end (n, 3),
-# radii (n,), index of the segment in its arbor. `first` (arbors + 1): where each
-# arbor begins. Axons also come in groups of a few connected segments, which one capsule
-# holds: group_bounds (groups + 1), its ends and radius.
-Axons = namedtuple(
-    "Axons",
-    "first start end start_radius end_radius segment group_first group_bounds"
-    " group_start group_end group_radius",
-)
-Targets = namedtuple("Targets", "first start end start_radius end_radius segment kind")
-# Cells: arbor (n,), position (n, 3), turn (n, 2) = cosine and sine of the azimuth,
-# mask (n,) = bits of the target kinds that the cell's axon may contact.
-Placed = namedtuple("Placed", "arbor position turn mask")
-# A box of voxels: corner `origin`, voxel sizes and counts along x, y, z, periods in x
-# and y (0: open).
-Grid = namedtuple("Grid", "origin size shape period")
-# Targets of some cells, sorted by voxel; voxel v holds rows first[v] to first[v + 1].
-# `shapes` (8, n) holds single-precision copies relative to the grid's origin: middle,
-# half, half length, radius. `exact` (n, 8) holds the placed capsule in double precision:
-# start, way to the end, radius at the start, its change to the end. `owner` is the cell
-# in the list, `segment` the segment of its arbor. `reach`: the largest half length plus
-# radius; `most`: more rows than one group of axon segments can be near to.
-Layer = namedtuple("Layer", "grid first shapes exact owner segment kind reach most")
-# Largest gap, least spacing, room for the errors of single precision, autapses allowed.
-Rules = namedtuple("Rules", "max_gap min_spacing slack autapses")
-# What the axons of a task came close to: presynaptic cell of the task, cell of the
-# layer, row of the axon, segment of the target in its arbor, gap, and fractions along
-# both segments.
-Hits = namedtuple("Hits", "pre owner axon target gap axon_fraction target_fraction")
-# Pairs with at least one site, and their sites one pair after another, closest first.
-Sites = namedtuple("Sites", "axon target axon_fraction target_fraction gap")
-Pairs = namedtuple("Pairs", "post pre count")
-
-# Memory that one task uses again and again: segment (2, 3), a placed axon segment,
-# origin of the shapes copied, middle and half (3,) of the segment, marks of one run of
-# rows, rows found around a group of segments with a copy of their shapes, and positions
-# in that list of those found around one segment.
-Work = namedtuple("Work", "segment origin middle half near found shapes few")
-
 _OWN_KINDS = np.uint8(12)  # an autapse may sit on basal and apical dendrite only
-_PARALLEL = 1e-9
-_SHORT_SORT = 16
 _TILE_UM = 16.0
-
-
-@kernel
-def _place(local, turn, position, out):
-    """Turn a point of the arbor's frame about z and move it to the cell's place."""
-    out[0] = turn[0] * local[0] - turn[1] * local[1] + position[0]
-    out[1] = turn[1] * local[0] + turn[0] * local[1] + position[1]
-    out[2] = local[2] + position[2]
-
-
-@kernel
-def _point_to_segment(px, py, pz, ax, ay, az, ux, uy, uz):
-    """Squared distance from p to the segment from a along u, and the fraction there."""
-    wx, wy, wz = px - ax, py - ay, pz - az
-    square = ux * ux + uy * uy + uz * uz
-    along = wx * ux + wy * uy + wz * uz
-    fraction = min(max(along / square, 0.0), 1.0) if square > 0.0 else 0.0
-    wx, wy, wz = wx - fraction * ux, wy - fraction * uy, wz - fraction * uz
-    return wx * wx + wy * wy + wz * wz, fraction
-
-
-@kernel
-def _closest(ax, ay, az, ux, uy, uz, cx, cy, cz, vx, vy, vz):
-    """Closest approach of the segments from a along u and from c along v.
-
-    Returns the squared distance and the fractions along both. The interior
-    solution of the two lines stands alone when it lies inside both segments and the
-    lines are not nearly parallel; otherwise the four end points compete with it.
-    """
-    wx, wy, wz = cx - ax, cy - ay, cz - az
-    uu, vv = ux * ux + uy * uy + uz * uz, vx * vx + vy * vy + vz * vz
-    uv, uw = ux * vx + uy * vy + uz * vz, ux * wx + uy * wy + uz * wz
-    vw = vx * wx + vy * wy + vz * wz
-    best, s_best, t_best = np.inf, 0.0, 0.0
-    determinant = uu * vv - uv * uv
-    if determinant > 0.0:
-        s = (uw * vv - uv * vw) / determinant
-        t = (uv * s - vw) / vv
-        if 0.0 <= s <= 1.0 and 0.0 <= t <= 1.0:
-            x, y, z = wx + t * vx - s * ux, wy + t * vy - s * uy, wz + t * vz - s * uz
-            best, s_best, t_best = x * x + y * y + z * z, s, t
-            if determinant > _PARALLEL * uu * vv:
-                return best, s_best, t_best
-    for end in range(2):
-        distance, t = _point_to_segment(
-            ax + end * ux, ay + end * uy, az + end * uz, cx, cy, cz, vx, vy, vz
-        )
-        if distance < best:
-            best, s_best, t_best = distance, float(end), t
-        distance, s = _point_to_segment(
-            cx + end * vx, cy + end * vy, cz + end * vz, ax, ay, az, ux, uy, uz
-        )
-        if distance < best:
-            best, s_best, t_best = distance, s, float(end)
-    return best, s_best, t_best
-
-
-@kernel
-def segment_distances(a, b, c, d):
-    """Distances and fractions of closest approach of segments ab and cd, rows (n, 3)."""
-    out = np.zeros((a.shape[0], 3))
-    for row in range(a.shape[0]):
-        u, v = b[row] - a[row], d[row] - c[row]
-        square, s, t = _closest(
-            a[row, 0],
-            a[row, 1],
-            a[row, 2],
-            u[0],
-            u[1],
-            u[2],
-            c[row, 0],
-            c[row, 1],
-            c[row, 2],
-            v[0],
-            v[1],
-            v[2],
-        )
-        out[row, 0], out[row, 1], out[row, 2] = np.sqrt(square), s, t
-    return out
-
-
-@kernel
-def _wrapped(value, period):
-    """Bring a coordinate into [0, period); leave it where the period is 0."""
-    return value - period * np.floor(value / period) if period > 0.0 else value
-
-
-@kernel
-def _voxel_of(middle, grid):
-    """Index of the voxel that holds a point given relative to the grid's origin."""
-    index = 0
-    for axis in range(3):
-        step = int(np.floor(middle[axis] / grid.size[axis]))
-        index = index * grid.shape[axis] + min(max(step, 0), grid.shape[axis] - 1)
-    return index
-
-
-@kernel
-def _middle_of(start, end, grid, middle):
-    """Middle of a segment relative to the grid's origin, periods taken out."""
-    for axis in range(3):
-        value = 0.5 * (start[axis] + end[axis]) - grid.origin[axis]
-        middle[axis] = _wrapped(value, grid.period[axis])
-
-
-@kernel
-def count_targets(targets, placed, cells, grid, first):
-    """Set `first` (voxels + 1) to the running number of targets up to each voxel."""
-    start, end, middle = np.zeros(3), np.zeros(3), np.zeros(3)
-    for cell in cells:
-        arbor, turn, position = (
-            placed.arbor[cell],
-            placed.turn[cell],
-            placed.position[cell],
-        )
-        for row in range(targets.first[arbor], targets.first[arbor + 1]):
-            _place(targets.start[row], turn, position, start)
-            _place(targets.end[row], turn, position, end)
-            _middle_of(start, end, grid, middle)
-            first[_voxel_of(middle, grid)] += 1
-    total = 0
-    for voxel in range(first.size):
-        total += first[voxel]
-        first[voxel] = total
-
-
-@kernel
-def fill_layer(targets, placed, cells, layer):
-    """Write every target into its voxel's rows; `first` ends as where voxels begin."""
-    start, end, middle, grid = np.zeros(3), np.zeros(3), np.zeros(3), layer.grid
-    for index in range(cells.size - 1, -1, -1):
-        cell = cells[index]
-        arbor, turn, position = (
-            placed.arbor[cell],
-            placed.turn[cell],
-            placed.position[cell],
-        )
-        for row in range(targets.first[arbor + 1] - 1, targets.first[arbor] - 1, -1):
-            _place(targets.start[row], turn, position, start)
-            _place(targets.end[row], turn, position, end)
-            _middle_of(start, end, grid, middle)
-            voxel = _voxel_of(middle, grid)
-            layer.first[voxel] -= 1
-            place = layer.first[voxel]
-            square = 0.0
-            for axis in range(3):
-                way = end[axis] - start[axis]
-                layer.shapes[axis, place] = middle[axis]
-                layer.shapes[3 + axis, place] = 0.5 * way
-                layer.exact[place, axis] = start[axis]
-                layer.exact[place, 3 + axis] = way
-                square += way * way
-            first, last = targets.start_radius[row], targets.end_radius[row]
-            layer.shapes[6, place] = 0.5 * np.sqrt(square)
-            layer.shapes[7, place] = max(first, last)
-            layer.exact[place, 6], layer.exact[place, 7] = first, last - first
-            layer.owner[place], layer.kind[place] = index, targets.kind[row]
-            layer.segment[place] = targets.segment[row]
 
 
 @kernel
@@ -257,73 +60,6 @@ def _longer(array):
     out = np.zeros(2 * array.size, array.dtype)
     out[: array.size] = array
     return out
-
-
-@kernel
-def _after(gap, axon, target, i, j):
-    """Tell whether hit i comes after hit j: by gap, then by the two segments."""
-    if gap[i] != gap[j]:
-        return gap[i] > gap[j]
-    if axon[i] != axon[j]:
-        return axon[i] > axon[j]
-    return target[i] > target[j]
-
-
-@kernel
-def _sift(order, low, high, root, gap, axon, target):
-    while True:
-        child = 2 * root + 1
-        if child >= high - low:
-            return
-        if child + 1 < high - low and _after(
-            gap, axon, target, order[low + child + 1], order[low + child]
-        ):
-            child += 1
-        if not _after(gap, axon, target, order[low + child], order[low + root]):
-            return
-        order[low + root], order[low + child] = order[low + child], order[low + root]
-        root = child
-
-
-@kernel
-def _sort_hits(order, low, high, gap, axon, target):
-    """Sort order[low:high] closest first: insertion when short, else a heap."""
-    if high - low <= _SHORT_SORT:
-        for i in range(low + 1, high):
-            item, j = order[i], i
-            while j > low and _after(gap, axon, target, order[j - 1], item):
-                order[j] = order[j - 1]
-                j -= 1
-            order[j] = item
-        return
-    for root in range((high - low) // 2 - 1, -1, -1):
-        _sift(order, low, high, root, gap, axon, target)
-    for last in range(high - 1, low, -1):
-        order[low], order[last] = order[last], order[low]
-        _sift(order, low, last, 0, gap, axon, target)
-
-
-@kernel
-def _thin(order, low, high, place, min_spacing):
-    """Keep the closest hit, drop those near it along the axon, repeat.
-
-    Kept hits are moved to the front of order[low:high]; returns how many.
-    """
-    kept = low
-    for i in range(low, high):
-        item, clear = order[i], True
-        for j in range(low, kept):
-            other = order[j]
-            square = 0.0
-            for axis in range(3):
-                square += (place[item, axis] - place[other, axis]) ** 2
-            if square < min_spacing * min_spacing:
-                clear = False
-                break
-        if clear:
-            order[kept] = item
-            kept += 1
-    return kept - low
 
 
 @kernel
@@ -399,7 +135,7 @@ def _test(axons, layer, rules, own, mask, pre, axon, work, m, hits, n):
         vx, vy, vz = exact[row, 3], exact[row, 4], exact[row, 5]
         cx += _shift(period[0], ax + 0.5 * ux - cx - 0.5 * vx)
         cy += _shift(period[1], ay + 0.5 * uy - cy - 0.5 * vy)
-        square, s, t = _closest(ax, ay, az, ux, uy, uz, cx, cy, cz, vx, vy, vz)
+        square, s, t = closest(ax, ay, az, ux, uy, uz, cx, cy, cz, vx, vy, vz)
         b_radius = exact[row, 6] + t * exact[row, 7]
         gap = max(np.sqrt(square) - a_radius - s * a_taper - b_radius, 0.0)
         if gap <= rules.max_gap:
@@ -438,7 +174,7 @@ def _look(layer, reach, work):
     rows of the layer stand in `work.found`; `work.middle` is left at the capsule's.
     """
     segment, middle, half, grid = work.segment, work.middle, work.half, layer.grid
-    _middle_of(segment[0], segment[1], grid, middle)
+    middle_of(segment[0], segment[1], grid, middle)
     square, m = 0.0, 0
     for axis in range(3):
         half[axis] = 0.5 * (segment[1, axis] - segment[0, axis])
@@ -487,8 +223,8 @@ def _narrow(axons, turn, position, rules, axon, origin, m, work):
     `origin` leads from the circuit frame to that of the copied shapes.
     """
     segment, middle, half = work.segment, work.middle, work.half
-    _place(axons.start[axon], turn, position, segment[0])
-    _place(axons.end[axon], turn, position, segment[1])
+    place(axons.start[axon], turn, position, segment[0])
+    place(axons.end[axon], turn, position, segment[1])
     square = 0.0
     for axis in range(3):
         middle[axis] = 0.5 * (segment[0, axis] + segment[1, axis]) - origin[axis]
@@ -507,8 +243,8 @@ def _collect(axons, layer, placed, rules, own, cell, pre, group, work, hits, n):
     segment, origin = work.segment, work.origin
     turn, position, mask = placed.turn[cell], placed.position[cell], placed.mask[cell]
     reach = axons.group_radius[group] + rules.max_gap + rules.slack
-    _place(axons.group_start[group], turn, position, segment[0])
-    _place(axons.group_end[group], turn, position, segment[1])
+    place(axons.group_start[group], turn, position, segment[0])
+    place(axons.group_end[group], turn, position, segment[1])
     m = _look(layer, reach, work)
     if m == 0:
         return hits, n
@@ -547,9 +283,9 @@ def _list_groups(axons, placed, pre_cells, grid):
             placed.position[cell],
         )
         for item in range(axons.group_first[arbor], axons.group_first[arbor + 1]):
-            _place(axons.group_start[item], turn, position, start)
+            place(axons.group_start[item], turn, position, start)
             for axis in range(3):
-                value = _wrapped(start[axis] - grid.origin[axis], grid.period[axis])
+                value = wrapped(start[axis] - grid.origin[axis], grid.period[axis])
                 step = min(max(np.floor(value / _TILE_UM), -1.0), 4094.0) + 1.0
                 key[n] = key[n] * 4096 + np.int64(step)
             pre[n], group[n] = index, item
@@ -559,35 +295,15 @@ def _list_groups(axons, placed, pre_cells, grid):
 
 
 @kernel
-def _sorted_by(values, chosen, first, order):
-    """Order `chosen` items by a small whole number; those of v: first[v] to first[v+1].
-
-    Stable; `first` has one entry more than there are numbers.
-    """
-    first[:] = 0
-    for item in chosen:
-        first[values[item] + 1] += 1
-    for v in range(first.size - 1):
-        first[v + 1] += first[v]
-    for i in range(chosen.size):
-        v = values[chosen[i]]
-        order[first[v]] = chosen[i]
-        first[v] += 1
-    for v in range(first.size - 1, 0, -1):
-        first[v] = first[v - 1]
-    first[0] = 0
-
-
-@kernel
 def _axon_places(axons, hits, n):
     """Where each hit sits on the axon, in the arbor's own frame, shape (n, 3)."""
-    place = np.zeros((n, 3))
+    spots = np.zeros((n, 3))
     for i in range(n):
         axon, s = hits.axon[i], hits.axon_fraction[i]
         for axis in range(3):
             start = axons.start[axon, axis]
-            place[i, axis] = start + s * (axons.end[axon, axis] - start)
-    return place
+            spots[i, axis] = start + s * (axons.end[axon, axis] - start)
+    return spots
 
 
 @kernel
@@ -680,22 +396,22 @@ def search(axons, layers, placed, rules, cells, pre_cells):
     in the order given, then in the order of `cells`) and their Sites.
     """
     hits, n = _all_hits(axons, layers, placed, rules, cells, pre_cells)
-    place = _axon_places(axons, hits, n)
+    spots = _axon_places(axons, hits, n)
     by_pre, pre_first = np.zeros(n, np.int64), np.zeros(pre_cells.size + 1, np.int64)
-    _sorted_by(hits.pre, np.arange(n), pre_first, by_pre)
+    sorted_by(hits.pre, np.arange(n), pre_first, by_pre)
     sites, sites_n, pairs_n = _new_sites(4096), 0, 0
     post, pre_out = np.zeros(1024, np.int32), np.zeros(1024, np.int32)
     count, first = np.zeros(1024, np.int32), np.zeros(cells.size + 1, np.int64)
     order = np.zeros(n, np.int64)
     for pre in range(pre_cells.size):
         mine = by_pre[pre_first[pre] : pre_first[pre + 1]]
-        _sorted_by(hits.owner, mine, first, order)
+        sorted_by(hits.owner, mine, first, order)
         for owner in range(cells.size):
             low, high = first[owner], first[owner + 1]
             if low == high:
                 continue
-            _sort_hits(order, low, high, hits.gap, hits.axon, hits.target)
-            kept = _thin(order, low, high, place, rules.min_spacing)
+            sort_hits(order, low, high, hits.gap, hits.axon, hits.target)
+            kept = thin(order, low, high, spots, rules.min_spacing)
             sites, sites_n = _append_sites(
                 axons, hits, order, low, low + kept, sites, sites_n
             )

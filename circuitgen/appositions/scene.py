@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from circuitgen.appositions.kernels import Axons, Placed, Targets
+from circuitgen.appositions.records import Axons, Placed, Targets
 from circuitgen.morphology.arbor import Arbor, Kind
 
 # Bits of the kinds of target; a presynaptic type's mask is a sum of them.

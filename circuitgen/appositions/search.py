@@ -8,7 +8,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from circuitgen.appositions import kernels
+from circuitgen.appositions.index_kernels import count_targets, fill_layer
+from circuitgen.appositions.kernels import search
+from circuitgen.appositions.records import Grid, Layer, Rules
 from circuitgen.appositions.scene import Scene
 
 _VOXEL_SHARE = 1.4
@@ -63,7 +65,7 @@ def _box_of(scene: Scene, cells: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     return low.min(axis=0), high.max(axis=0)
 
 
-def _make_grid(scene: Scene, cells: np.ndarray, reach_um: float) -> kernels.Grid:
+def _make_grid(scene: Scene, cells: np.ndarray, reach_um: float) -> Grid:
     """Lay voxels of about the reach over some cells; a period holds whole ones."""
     low, high = _box_of(scene, cells)
     period = np.array([*scene.wrap_um, 0.0])
@@ -74,10 +76,10 @@ def _make_grid(scene: Scene, cells: np.ndarray, reach_um: float) -> kernels.Grid
     shape = np.where(period > 0, np.floor(extent / wanted), np.ceil(extent / wanted))
     shape = np.maximum(shape, 1).astype(np.int64)
     sizes = np.where(period > 0, extent / shape, wanted)
-    return kernels.Grid(origin=low, size=sizes, shape=shape, period=period)
+    return Grid(origin=low, size=sizes, shape=shape, period=period)
 
 
-def _most_rows(scene: Scene, grid: kernels.Grid, first, reach_um: float) -> int:
+def _most_rows(scene: Scene, grid: Grid, first, reach_um: float) -> int:
     """Bound the rows that one group of axon segments can be near to.
 
     A group looks at no more columns of voxels than its reach spans, and at no more
@@ -94,16 +96,16 @@ def _most_rows(scene: Scene, grid: kernels.Grid, first, reach_um: float) -> int:
     return int(columns * fullest)
 
 
-def _make_layer(scene, targets, cells) -> kernels.Layer:
+def _make_layer(scene, targets, cells) -> Layer:
     """Sort the targets of one layer by voxel."""
     radius = np.maximum(targets.start_radius, targets.end_radius)
     half_length = np.linalg.norm(targets.end - targets.start, axis=1) / 2
     reach_um = float((radius + half_length).max())
     grid = _make_grid(scene, cells, reach_um + scene.max_gap_um)
     first = np.zeros(int(grid.shape.prod()) + 1, np.int32)
-    kernels.count_targets(targets, scene.placed, cells, grid, first)
+    count_targets(targets, scene.placed, cells, grid, first)
     n = int(first[-1])
-    layer = kernels.Layer(
+    layer = Layer(
         grid=grid,
         first=first,
         shapes=np.zeros((8, n), np.float32),
@@ -114,7 +116,7 @@ def _make_layer(scene, targets, cells) -> kernels.Layer:
         reach=reach_um,
         most=min(n, _most_rows(scene, grid, first, reach_um)),
     )
-    kernels.fill_layer(targets, scene.placed, cells, layer)
+    fill_layer(targets, scene.placed, cells, layer)
     return layer
 
 
@@ -164,7 +166,7 @@ def _search_tasks(index: TargetIndex, rules, pre_cells, threads: int):
     world = (scene.axons, index.layers, scene.placed, rules, index.cells)
     pool = ThreadPoolExecutor(threads)
     try:
-        return list(pool.map(lambda pre: kernels.search(*world, pre), tasks))
+        return list(pool.map(lambda pre: search(*world, pre), tasks))
     finally:
         # On an interrupt the tasks under way end by themselves; no new one begins.
         pool.shutdown(cancel_futures=True)
@@ -206,7 +208,7 @@ def find_appositions(
         Threads that search at once; the machine's cores by default.
     """
     scene = index.scene
-    rules = kernels.Rules(
+    rules = Rules(
         max_gap=scene.max_gap_um,
         min_spacing=scene.min_spacing_um,
         slack=_slack_um(scene, index.layers),

@@ -23,7 +23,7 @@ def _sources_hash() -> str:
     digest = hashlib.sha256()
     for part in (__version__, numba.__version__, sys.version):
         digest.update(part.encode())
-    sources = [*_PACKAGE.rglob("kernels.py"), _PACKAGE / "core" / "draws.py"]
+    sources = [*_PACKAGE.rglob("*kernels.py"), _PACKAGE / "core" / "draws.py"]
     for source in sorted(sources):
         digest.update(source.read_bytes())
     return digest.hexdigest()[:16]
@@ -70,4 +70,4 @@ def is_compiled(kernel_name: str) -> bool:
     """Tell whether an earlier run left the machine code of a kernel of this release."""
     if CACHE_FOLDER is None:
         return False
-    return any(CACHE_FOLDER.rglob(f"kernels.{kernel_name}-*.nbi"))
+    return any(CACHE_FOLDER.rglob(f"*kernels.{kernel_name}-*.nbi"))
