@@ -1,0 +1,198 @@
+"""Parts of a document as strict models; every broken rule of a part found at once."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Collection, Iterator
+
+from pydantic import BaseModel, ConfigDict, ValidationError, model_validator
+from pydantic_core import InitErrorDetails, PydanticCustomError
+
+from circuitgen.core.errors import InputError, nearest_name
+from circuitgen.spec.document import Document, Location
+
+# Where, the broken rule, the nearest valid name: the arguments of Document.problem.
+Fault = tuple[Location, str, str | None]
+
+_SHOWN_CHARACTERS = 60
+_WORDED = "worded"
+_UNIT = re.compile(
+    r"_((?:per_)?(?:[nuµμcm]?m[23]?|microns?|micromet(?:er|re)s?|millimet(?:er|re)s?"
+    r"|(?:[uµμcm]?m_)?per_[um]?s|[uµμm]?s|seconds?))$"
+)
+
+
+class RuleError(ValueError):
+    """An input breaks a rule; mend the field that the message is about.
+
+    Validators of fields raise it; `Part.rules` yields it.
+
+    Parameters
+    ----------
+    rule : str
+        What must hold, in words that follow the field's name: ``must be sorted``.
+    field : str
+        Name of the part's field that must be mended; empty for the whole part or,
+        in a validator of one field, for that field.
+    nearest : str or None
+        The nearest valid name, when the value is a misspelt name.
+    """
+
+    def __init__(self, rule: str, *, field: str = "", nearest: str | None = None):
+        super().__init__(rule)
+        self.rule, self.field, self.nearest = rule, field, nearest
+
+
+class Part(BaseModel):
+    """A part of a document: types taken at their word, unknown keys refused, frozen.
+
+    A key without a value counts as absent. Rules between fields belong in `rules`, not
+    in model validators, so that they are reported along with faults of single fields.
+    """
+
+    model_config = ConfigDict(extra="forbid", strict=True, frozen=True)
+
+    @classmethod
+    def rules(cls, given: dict) -> Iterator[RuleError]:
+        """Yield every rule between fields that `given` breaks.
+
+        `given` holds the known keys that have a value, as they were written: a value
+        may be of any type, and what is wrong with it alone is reported elsewhere.
+        """
+        return iter(())
+
+    @model_validator(mode="wrap")
+    @classmethod
+    def _find_all(cls, raw, handler):
+        if not isinstance(raw, dict):
+            return handler(raw)
+        known = {
+            key: value
+            for key, value in raw.items()
+            if key in cls.model_fields and value is not None
+        }
+        errors = [
+            _worded((key,), *unknown_name(key, cls.model_fields))
+            for key in raw
+            if key not in cls.model_fields
+        ]
+        for error in cls.rules(known):
+            place = (error.field,) if error.field else ()
+            errors.append(_worded(place, error.rule, error.nearest))
+        try:
+            part = handler(known)
+        except ValidationError as failure:
+            for error in failure.errors(include_url=False):
+                errors.append(_worded(error["loc"], *_in_words(error)))
+        if errors:
+            raise ValidationError.from_exception_data(cls.__name__, errors)
+        return part
+
+
+def _worded(place: Location, rule: str, nearest: str | None) -> InitErrorDetails:
+    context = {"rule": rule, "nearest": nearest}
+    kind = PydanticCustomError(_WORDED, "{rule}", context)
+    return InitErrorDetails(type=kind, loc=place, input=None)
+
+
+def unknown_name(
+    name: str, known: Collection[str], kind: str = "key"
+) -> tuple[str, str | None]:
+    """Say what is wrong with a key; a known one in another unit gets a hint."""
+    stem = _UNIT.sub("", name)
+    same_stem = [other for other in known if _UNIT.sub("", other) == stem]
+    nearest = nearest_name(name, same_stem or known)
+    if nearest is None:
+        return f"is not a known {kind}; known here: {', '.join(known)}", None
+    unit, given_unit = _UNIT.search(nearest), _UNIT.search(name)
+    if unit and given_unit and unit[1] != given_unit[1]:
+        return f"is not a known {kind}; the unit here is {unit[1]}", nearest
+    return f"is not a known {kind}", nearest
+
+
+def shown(value: object) -> str:
+    """Return a value as a message shows it: short, printable, quoted if it is text."""
+    if value is None or isinstance(value, bool):
+        return {None: "nothing", True: "true", False: "false"}[value]
+    if isinstance(value, dict | tuple | list):
+        return "'key: value' lines" if isinstance(value, dict) else "a list"
+    text = f"'{value}'" if isinstance(value, str) else str(value)
+    if len(text) > _SHOWN_CHARACTERS:
+        text = text[:_SHOWN_CHARACTERS] + "…"
+    return "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in text)
+
+
+_LIMITS = {
+    "greater_than": ("gt", ">"),
+    "greater_than_equal": ("ge", ">="),
+    "less_than": ("lt", "<"),
+    "less_than_equal": ("le", "<="),
+}
+_KINDS = {
+    "int": "a whole number",
+    "float": "a number",
+    "finite": "a finite number",
+    "string": "text",
+    "path": "a file name",
+    "bool": "true or false",
+    "tuple": "a list",
+    "dict": "'key: value' lines",
+    "model": "'key: value' lines",
+}
+
+
+def _in_words(error: dict) -> tuple[str, str | None]:
+    """Put an error of pydantic into the words of a problem: rule, nearest name."""
+    kind, context, value = error["type"], error.get("ctx", {}), error["input"]
+    if kind == _WORDED:
+        return context["rule"], context["nearest"]
+    if isinstance(context.get("error"), RuleError):
+        return context["error"].rule, context["error"].nearest
+    if kind == "missing":
+        return "is missing", None
+    if kind == "extra_forbidden":
+        return "is not a known key", None
+    if kind in _LIMITS:
+        name, sign = _LIMITS[kind]
+        limit = context[name]
+        limit = f"{limit:g}" if isinstance(limit, float) else limit
+        return f"= {shown(value)} must be {sign} {limit}", None
+    if kind == "literal_error":
+        names = re.findall(r"'([^']*)'", context["expected"])
+        rule = f"= {shown(value)} must be one of {', '.join(names)}"
+        return rule, nearest_name(value, names)
+    if kind == "too_short":
+        return "must have at least one entry", None
+    family = kind.partition("_")[0]
+    if family in _KINDS:
+        quotable = family == "string" and isinstance(value, int | float)
+        hint = "; write it in quotes" if quotable else ""
+        return f"= {shown(value)} must be {_KINDS[family]}{hint}", None
+    return f"= {shown(value)}: {error['msg']}", None
+
+
+def validate(
+    data: object, model: type[BaseModel]
+) -> tuple[BaseModel | None, list[Fault]]:
+    """Validate plain data; return the instance (None if there are faults) and faults."""
+    try:
+        return model.model_validate(data), []
+    except ValidationError as failure:
+        faults = []
+        for error in failure.errors(include_url=False):
+            # A fault of a mapping's key carries a mark behind the key itself.
+            place = tuple(part for part in error["loc"] if part != "[key]")
+            faults.append((place, *_in_words(error)))
+        return None, faults
+
+
+def validate_document(document: Document, model: type[BaseModel]) -> BaseModel:
+    """Return a document as an instance of `model`, best a `Part`.
+
+    Raises InputError with every problem, in order of lines.
+    """
+    instance, faults = validate(document.data, model)
+    if faults:
+        problems = [document.problem(*fault) for fault in faults]
+        raise InputError(sorted(problems, key=lambda problem: problem.line))
+    return instance
