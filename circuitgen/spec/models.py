@@ -238,6 +238,14 @@ class Spec:
         return sum(layer.thickness_um for layer in self.layers)
 
     @property
+    def layer_bounds_um(self) -> tuple[tuple[float, float], ...]:
+        """Lowest and highest z of each layer, from the pia downward."""
+        # Each bound is one sum, so that a layer ends exactly where the next begins.
+        thicknesses = [layer.thickness_um for layer in self.layers]
+        tops = [sum(thicknesses[place:]) for place in range(len(thicknesses) + 1)]
+        return tuple(zip(tops[1:], tops, strict=False))
+
+    @property
     def type_names(self) -> tuple[str, ...]:
         """Names of the cell types, in the order of the file."""
         return tuple(cell_type.name for cell_type in self.cell_types)

@@ -112,6 +112,13 @@ class Recording(RecordingRow):
     file: str
     line: int
 
+    @property
+    def measured_probability(self) -> float | None:
+        """Connected share of the tested pairs, or the probability given; or None."""
+        if self.tested_n is None:
+            return self.probability
+        return self.connected_n / self.tested_n
+
 
 COLUMNS = tuple(RecordingRow.model_fields)
 _TEXT_COLUMNS = ("source", "pre_type", "post_type", "distance_kind", "use")

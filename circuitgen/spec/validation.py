@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Collection, Iterator
+from typing import get_args
 
 from pydantic import BaseModel, ConfigDict, ValidationError, model_validator
 from pydantic_core import InitErrorDetails, PydanticCustomError
@@ -56,8 +57,8 @@ class Part(BaseModel):
     def rules(cls, given: dict) -> Iterator[RuleError]:
         """Yield every rule between fields that `given` breaks.
 
-        `given` holds the known keys that have a value, as they were written: a value
-        may be of any type, and what is wrong with it alone is reported elsewhere.
+        `given` holds the keys that have a value, as they were written: a value may be
+        of any type, and what is wrong with it alone is reported elsewhere.
         """
         return iter(())
 
@@ -66,24 +67,21 @@ class Part(BaseModel):
     def _find_all(cls, raw, handler):
         if not isinstance(raw, dict):
             return handler(raw)
-        known = {
+        # An unknown key stays, so that it is refused even without a value.
+        given = {
             key: value
             for key, value in raw.items()
-            if key in cls.model_fields and value is not None
+            if value is not None or key not in cls.model_fields
         }
-        errors = [
-            _worded((key,), *unknown_name(key, cls.model_fields))
-            for key in raw
-            if key not in cls.model_fields
-        ]
-        for error in cls.rules(known):
+        errors = []
+        for error in cls.rules(given):
             place = (error.field,) if error.field else ()
             errors.append(_worded(place, error.rule, error.nearest))
         try:
-            part = handler(known)
+            part = handler(given)
         except ValidationError as failure:
             for error in failure.errors(include_url=False):
-                errors.append(_worded(error["loc"], *_in_words(error)))
+                errors.append(_worded(error["loc"], *_in_words(error, cls)))
         if errors:
             raise ValidationError.from_exception_data(cls.__name__, errors)
         return part
@@ -101,11 +99,10 @@ def unknown_name(
     """Say what is wrong with a key; a known one in another unit gets a hint."""
     stem = _UNIT.sub("", name)
     same_stem = [other for other in known if _UNIT.sub("", other) == stem]
-    nearest = nearest_name(name, same_stem or known)
+    nearest = same_stem[0] if same_stem else nearest_name(name, known)
     if nearest is None:
         return f"is not a known {kind}; known here: {', '.join(known)}", None
-    unit, given_unit = _UNIT.search(nearest), _UNIT.search(name)
-    if unit and given_unit and unit[1] != given_unit[1]:
+    if same_stem and (unit := _UNIT.search(nearest)):
         return f"is not a known {kind}; the unit here is {unit[1]}", nearest
     return f"is not a known {kind}", nearest
 
@@ -129,29 +126,51 @@ _LIMITS = {
     "less_than_equal": ("le", "<="),
 }
 _KINDS = {
-    "int": "a whole number",
-    "float": "a number",
-    "finite": "a finite number",
-    "string": "text",
-    "path": "a file name",
-    "bool": "true or false",
-    "tuple": "a list",
-    "dict": "'key: value' lines",
-    "model": "'key: value' lines",
+    "int_type": "a whole number",
+    "int_parsing": "a whole number",
+    "int_from_float": "a whole number",
+    "float_type": "a number",
+    "float_parsing": "a number",
+    "finite_number": "a finite number",
+    "string_type": "text",
+    "path_type": "a file name",
+    "bool_type": "true or false",
+    "bool_parsing": "true or false",
+    "tuple_type": "a list",
+    "dict_type": "'key: value' lines",
+    "model_type": "'key: value' lines",
 }
 
 
-def _in_words(error: dict) -> tuple[str, str | None]:
+def _models_in(annotation: object) -> list[type[BaseModel]]:
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        return [annotation]
+    return [model for part in get_args(annotation) for model in _models_in(part)]
+
+
+def _keys_at(model: type[BaseModel], place: Location) -> list[str]:
+    """Return the keys that a model knows at a place inside it."""
+    models = [model]
+    for part in place:
+        fields = [one.model_fields[part] for one in models if part in one.model_fields]
+        # An index or a free key leads into a container of the models at hand.
+        if fields:
+            models = [one for field in fields for one in _models_in(field.annotation)]
+    return [key for one in models for key in one.model_fields]
+
+
+def _in_words(error: dict, model: type[BaseModel]) -> tuple[str, str | None]:
     """Put an error of pydantic into the words of a problem: rule, nearest name."""
     kind, context, value = error["type"], error.get("ctx", {}), error["input"]
     if kind == _WORDED:
         return context["rule"], context["nearest"]
-    if isinstance(context.get("error"), RuleError):
-        return context["error"].rule, context["error"].nearest
+    if isinstance(context.get("error"), ValueError):
+        return str(context["error"]), getattr(context["error"], "nearest", None)
     if kind == "missing":
         return "is missing", None
     if kind == "extra_forbidden":
-        return "is not a known key", None
+        *place, key = error["loc"]
+        return unknown_name(key, _keys_at(model, tuple(place)))
     if kind in _LIMITS:
         name, sign = _LIMITS[kind]
         limit = context[name]
@@ -162,12 +181,11 @@ def _in_words(error: dict) -> tuple[str, str | None]:
         rule = f"= {shown(value)} must be one of {', '.join(names)}"
         return rule, nearest_name(value, names)
     if kind == "too_short":
-        return "must have at least one entry", None
-    family = kind.partition("_")[0]
-    if family in _KINDS:
-        quotable = family == "string" and isinstance(value, int | float)
+        return f"must have at least {context['min_length']} entry", None
+    if kind in _KINDS:
+        quotable = kind == "string_type" and isinstance(value, int | float)
         hint = "; write it in quotes" if quotable else ""
-        return f"= {shown(value)} must be {_KINDS[family]}{hint}", None
+        return f"= {shown(value)} must be {_KINDS[kind]}{hint}", None
     return f"= {shown(value)}: {error['msg']}", None
 
 
@@ -182,7 +200,7 @@ def validate(
         for error in failure.errors(include_url=False):
             # A fault of a mapping's key carries a mark behind the key itself.
             place = tuple(part for part in error["loc"] if part != "[key]")
-            faults.append((place, *_in_words(error)))
+            faults.append((place, *_in_words(error, model)))
         return None, faults
 
 
