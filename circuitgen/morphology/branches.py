@@ -11,8 +11,8 @@ import numpy as np
 SAMPLE_UM = 4.0
 SMOOTHING_ROUNDS = 14
 WAVES_N = 24
-WAVE_UM = (24.0, 240.0)
-CALM_UM = 25.0  # bends grow to full size over this path from the soma
+WAVE_UM = (24.0, 400.0)
+CALM_WAVES = 0.5  # a wave grows to full size over this share of its length
 PIA_CALM_UM = 40.0
 TAPER = 0.6
 
@@ -41,19 +41,31 @@ def _children_n(parent: np.ndarray) -> np.ndarray:
     return np.bincount(parent[parent >= 0], minlength=parent.size)
 
 
-def make_binary(parent: np.ndarray) -> np.ndarray:
-    """Move third and later children toward the soma until no sample has above two."""
+def make_binary(position_um: np.ndarray, parent: np.ndarray) -> np.ndarray:
+    """Let third and later children branch off a sibling until each sample has two.
+
+    The last child moves to the first sample of the elder sibling that runs most
+    nearly its way, so that stems stay bare and parents stay before children.
+    """
     parent = parent.copy()
+    children = _children(parent)
+    for sample, own in enumerate(children):
+        while len(own) > 2:
+            moved = own.pop()
+            away = position_um[[*own, moved]] - position_um[sample]
+            away /= np.linalg.norm(away, axis=1)[:, None] + 1e-9
+            sibling = own[int((away[:-1] @ away[-1]).argmax())]
+            parent[moved] = sibling
+            children[sibling] = sorted([*children[sibling], moved])
+    return parent
+
+
+def _children(parent: np.ndarray) -> list[list[int]]:
     children: list[list[int]] = [[] for _ in parent]
-    for child, above in enumerate(parent):
+    for child, above in enumerate(parent.tolist()):
         if above >= 0:
             children[above].append(child)
-    for sample in range(parent.size - 1, -1, -1):
-        while len(children[sample]) > 2 and parent[sample] >= 0:
-            moved = children[sample].pop()
-            parent[moved] = parent[sample]
-            children[parent[sample]].append(moved)
-    return parent
+    return children
 
 
 def prune_twigs(position_um: np.ndarray, parent: np.ndarray, twig_um: float):
@@ -153,9 +165,9 @@ def bend(
     phase = (
         2.0 * np.pi * (position_um @ (along / length[:, None]).T + waves[:WAVES_N, 2])
     )
-    shift = np.sin(phase) @ (aside * size[:, None])
-    calm = np.minimum(path_from_soma_um(position_um, parent) / CALM_UM, 1.0) ** 2
-    shift *= calm[:, None]
+    path = path_from_soma_um(position_um, parent)[:, None]
+    calm = np.minimum(path / (CALM_WAVES * length), 1.0)
+    shift = (calm * np.sin(phase)) @ (aside * size[:, None])
     below = np.clip((pia_height_um - position_um[:, 1]) / PIA_CALM_UM, 0.0, 1.0)
     shift[:, 1] *= below
     return position_um + shift
@@ -179,11 +191,8 @@ def taper(
 def depth_first(position_um: np.ndarray, parent: np.ndarray) -> np.ndarray:
     """Order in which each branch's samples follow one another, thickest child first."""
     beyond = downstream_um(steps_um(position_um, parent), parent)
-    children: list[list[int]] = [[] for _ in parent]
-    roots = []
-    for child, above in enumerate(parent.tolist()):
-        (children[above] if above >= 0 else roots).append(child)
-    order, stack = [], roots[::-1]
+    children = _children(parent)
+    order, stack = [], np.flatnonzero(parent < 0)[::-1].tolist()
     while stack:
         sample = stack.pop()
         order.append(sample)

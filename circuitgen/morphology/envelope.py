@@ -19,7 +19,7 @@ from circuitgen.morphology.describe import Neurite, Part, Stems
 Draw = Callable[[str, int], np.ndarray]
 
 EDGE_UM = 10.0  # carrier points keep this far from the pia and from white matter
-SOMA_CLEARANCE_UM = 8.0
+CLEARANCE_UM = 6.0  # and this far outside the ends of the stems
 SKELETON_STEP_UM = 8.0
 LEAN = 0.06  # a trunk's end lies up to this share of its length off the axis
 OFF_CENTRE = 0.2  # a part's centre lies up to this share of its radius off the axis
@@ -112,12 +112,12 @@ def _draw_part(part: Part, site: Site, draw: Draw, purpose: str, points_n: int):
 
 
 def carrier_points(
-    part: Part, site: Site, draw: Draw, purpose: str, points_n: int
+    part: Part, site: Site, draw: Draw, purpose: str, points_n: int, clear_um: float
 ) -> np.ndarray:
     """Draw carrier points in one part of an envelope.
 
-    Points outside the cortex or too near the soma are left out; asking for more
-    points keeps the earlier ones.
+    Points outside the cortex or within `clear_um` of the soma centre are left out;
+    asking for more points keeps the earlier ones.
 
     Returns
     -------
@@ -127,8 +127,7 @@ def carrier_points(
         points = _draw_part(part, site, draw, purpose, points_n * 2**doubling)
         depth = site.soma_depth_um - points[:, 1]
         inside = (depth > EDGE_UM) & (depth < site.cortex_thickness_um - EDGE_UM)
-        clear = site.soma_radius_um + SOMA_CLEARANCE_UM
-        inside &= (points**2).sum(axis=1) > clear**2
+        inside &= (points**2).sum(axis=1) > clear_um**2
         if inside.sum() >= points_n:
             return points[inside][:points_n]
     raise AssertionError("unreachable: the loop is endless")
@@ -165,6 +164,15 @@ def _lines(ends_um: np.ndarray, soma_radius_um: float) -> Skeleton:
     return Skeleton(
         np.concatenate(positions), np.concatenate(parents), np.concatenate(paths)
     )
+
+
+def clearance_um(neurite: Neurite, site: Site) -> float:
+    """Return how far from the soma centre carrier points begin.
+
+    A point behind the end of a stem would make the stem turn back on itself.
+    """
+    stem_um = neurite.bare_um if neurite.stems is not None else 0.0
+    return max(stem_um, site.soma_radius_um) + CLEARANCE_UM
 
 
 def lay_skeleton(neurite: Neurite, site: Site, draw: Draw) -> Skeleton:

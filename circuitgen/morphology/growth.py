@@ -22,6 +22,7 @@ from circuitgen.morphology.envelope import (
     Site,
     Skeleton,
     carrier_points,
+    clearance_um,
     lay_skeleton,
 )
 from circuitgen.morphology.spanning import balanced_tree
@@ -142,9 +143,10 @@ def _grow_points(
     """Draw carrier points, span them, and make the branches natural."""
     shares = np.array([part.share for part in neurite.parts])
     counts = np.maximum(np.rint(points_n * shares / shares.sum()), 1).astype(int)
+    clear_um = clearance_um(neurite, site)
     points = np.concatenate(
         [
-            carrier_points(part, site, draw, f"part {row}", int(counts[row]))
+            carrier_points(part, site, draw, f"part {row}", int(counts[row]), clear_um)
             for row, part in enumerate(neurite.parts)
         ]
     )
@@ -161,10 +163,12 @@ def _grow_points(
     position = np.concatenate([skeleton.position_um, points[order]])
     parent = np.concatenate([skeleton.parent, joined])
     position, parent = branches.resample(position, parent)
-    parent = branches.make_binary(parent)
+    parent = branches.make_binary(position, parent)
     twig_um = _TWIG_UM[neurite.kind]
     position, parent = branches.prune_twigs(position, parent, twig_um)
     position = branches.smooth(position, parent)
+    # Smoothing draws samples away from the tips: even the pieces out again.
+    position, parent = branches.resample(position, parent)
     waves = draw("bends", 2 * branches.WAVES_N)
     pia_um = site.soma_depth_um
     return branches.bend(position, parent, neurite.wiggle, pia_um, waves), parent
