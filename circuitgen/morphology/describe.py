@@ -2,34 +2,67 @@
 
 from __future__ import annotations
 
+import re
+from collections.abc import Iterator
 from pathlib import Path
 from typing import Annotated, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, model_validator
+from pydantic import AfterValidator, Field
 
-from circuitgen.spec import read_document, validate_document
+from circuitgen.core.errors import CircuitgenError, InputError, Problem
+from circuitgen.spec import (
+    Document,
+    LengthUm,
+    Part,
+    Positive,
+    RuleError,
+    read_document,
+    validate_document,
+)
 
-Positive = Annotated[float, Field(gt=0, allow_inf_nan=False)]
-Finite = Annotated[float, Field(allow_inf_nan=False)]
-Range = tuple[Finite, Finite]
-Depth = Annotated[float, Field(ge=0, allow_inf_nan=False)]
-
-
-class _Plain(BaseModel):
-    model_config = ConfigDict(extra="forbid", frozen=True)
-
-
-def _need_one(first: object, second: object, names: str) -> None:
-    if (first is None) == (second is None):
-        raise ValueError(f"needs exactly one of {names}")
-
-
-def _need_rising(values: tuple[float, float] | None, name: str) -> None:
-    if values is not None and values[0] >= values[1]:
-        raise ValueError(f"{name} must be [smaller, larger]")
+_FILE_NAME = re.compile(r"[A-Za-z0-9][A-Za-z0-9_\-]*")
+# Far beyond any neuron; refused before growth takes hours.
+MOST_CABLE_UM = 200_000.0
 
 
-class Part(_Plain):
+def _check_not_empty(values: tuple) -> tuple:
+    if not values:
+        raise RuleError("must have at least one entry")
+    return values
+
+
+def _check_rising(values: tuple[float, float]) -> tuple[float, float]:
+    if values[0] >= values[1]:
+        raise RuleError(f"= [{values[0]:g}, {values[1]:g}] must be [smaller, larger]")
+    return values
+
+
+def _check_counts(values: tuple[int, int]) -> tuple[int, int]:
+    if values[0] > values[1]:
+        raise RuleError(f"= [{values[0]}, {values[1]}] must be [fewest, most]")
+    return values
+
+
+def _check_file_name(name: str) -> str:
+    if not _FILE_NAME.fullmatch(name):
+        raise RuleError(f"= '{name}' must be letters, digits, _ and - only")
+    return name
+
+
+def _one_of(given: dict, first: str, second: str) -> Iterator[RuleError]:
+    if first in given and second in given:
+        yield RuleError(f"is given beside {first}; keep one of the two", field=second)
+    if first not in given and second not in given:
+        yield RuleError(f"must have {first} or {second}")
+
+
+Height = Annotated[float, Field(ge=-1e5, le=1e5, allow_inf_nan=False)]
+Depth = Annotated[float, Field(ge=0, le=1e5, allow_inf_nan=False)]
+Elevation = Annotated[float, Field(ge=-90, le=90)]
+Stem = Annotated[int, Field(ge=1, le=30)]
+
+
+class Body(Part):
     """One simple body of an envelope; carrier points are drawn inside it.
 
     Attributes
@@ -52,19 +85,21 @@ class Part(_Plain):
 
     shape: Literal["ellipsoid", "cylinder", "rows"]
     share: Positive = 1.0
-    radius_um: Positive
-    height_um: Range | None = None
-    depth_um: Range | None = None
-    row_length_um: Positive | None = None
+    radius_um: LengthUm
+    height_um: Annotated[tuple[Height, Height], AfterValidator(_check_rising)] | None = (
+        None
+    )
+    depth_um: Annotated[tuple[Depth, Depth], AfterValidator(_check_rising)] | None = None
+    row_length_um: LengthUm | None = None
 
-    @model_validator(mode="after")
-    def _check(self) -> Part:
-        _need_one(self.height_um, self.depth_um, "height_um, depth_um")
-        _need_rising(self.height_um, "height_um")
-        _need_rising(self.depth_um, "depth_um")
-        if (self.shape == "rows") != (self.row_length_um is not None):
-            raise ValueError("row_length_um belongs to shape rows, which needs it")
-        return self
+    @classmethod
+    def rules(cls, given: dict) -> Iterator[RuleError]:
+        """Yield a place that is given in no way or in two, and a row length amiss."""
+        yield from _one_of(given, "height_um", "depth_um")
+        if given.get("shape") == "rows" and "row_length_um" not in given:
+            yield RuleError("is missing; shape rows needs it", field="row_length_um")
+        if given.get("shape") != "rows" and "row_length_um" in given:
+            yield RuleError("belongs to shape rows only", field="row_length_um")
 
     def heights_um(self, soma_depth_um: float) -> tuple[float, float]:
         """Return the lowest and highest point above a soma at this depth."""
@@ -73,7 +108,7 @@ class Part(_Plain):
         return soma_depth_um - self.depth_um[1], soma_depth_um - self.depth_um[0]
 
 
-class Stems(_Plain):
+class Stems(Part):
     """Several short stems that leave the soma spread over all azimuths.
 
     Attributes
@@ -84,20 +119,11 @@ class Stems(_Plain):
         Range of their directions; 90 is toward the pia, -90 toward white matter.
     """
 
-    count: tuple[Annotated[int, Field(ge=1)], Annotated[int, Field(ge=1)]]
-    elevation_deg: tuple[
-        Annotated[float, Field(ge=-90, le=90)], Annotated[float, Field(ge=-90, le=90)]
-    ]
-
-    @model_validator(mode="after")
-    def _check(self) -> Stems:
-        if self.count[0] > self.count[1]:
-            raise ValueError("count must be [fewest, most]")
-        _need_rising(self.elevation_deg, "elevation_deg")
-        return self
+    count: Annotated[tuple[Stem, Stem], AfterValidator(_check_counts)]
+    elevation_deg: Annotated[tuple[Elevation, Elevation], AfterValidator(_check_rising)]
 
 
-class Trunk(_Plain):
+class Trunk(Part):
     """One upright trunk from the soma to a height or to a depth.
 
     Attributes
@@ -108,13 +134,13 @@ class Trunk(_Plain):
         Where it ends, measured down from the pia. One of the two is given.
     """
 
-    end_height_um: Finite | None = None
+    end_height_um: Height | None = None
     end_depth_um: Depth | None = None
 
-    @model_validator(mode="after")
-    def _check(self) -> Trunk:
-        _need_one(self.end_height_um, self.end_depth_um, "end_height_um, end_depth_um")
-        return self
+    @classmethod
+    def rules(cls, given: dict) -> Iterator[RuleError]:
+        """Yield an end that is given in no way or in two."""
+        yield from _one_of(given, "end_height_um", "end_depth_um")
 
     def height_um(self, soma_depth_um: float) -> float:
         """Return the height of its end above a soma at this depth."""
@@ -123,7 +149,7 @@ class Trunk(_Plain):
         return soma_depth_um - self.end_depth_um
 
 
-class Neurite(_Plain):
+class Neurite(Part):
     """One axon, one apical dendrite, or a set of basal dendrites.
 
     Attributes
@@ -144,30 +170,33 @@ class Neurite(_Plain):
     wiggle : float
         Root mean square of the sideways slope of its bends; 0.3 adds about 5 % of
         cable.
-    parts : tuple of Part
+    parts : tuple of Body
         The envelope.
     """
 
     kind: Literal["axon", "basal", "apical"]
-    cable_um: Positive
-    balance: Annotated[float, Field(ge=0, allow_inf_nan=False)]
+    cable_um: Annotated[float, Field(gt=0, le=MOST_CABLE_UM, allow_inf_nan=False)]
+    balance: Annotated[float, Field(ge=0, le=1000, allow_inf_nan=False)]
     stems: Stems | None = None
     trunk: Trunk | None = None
-    bare_um: Positive
-    start_radius_um: Positive
-    tip_radius_um: Positive
+    bare_um: LengthUm
+    start_radius_um: LengthUm
+    tip_radius_um: LengthUm
     wiggle: Annotated[float, Field(ge=0, le=1)] = 0.3
-    parts: Annotated[tuple[Part, ...], Field(min_length=1)]
+    parts: Annotated[tuple[Body, ...], AfterValidator(_check_not_empty)]
 
-    @model_validator(mode="after")
-    def _check(self) -> Neurite:
-        _need_one(self.stems, self.trunk, "stems, trunk")
-        if self.tip_radius_um > self.start_radius_um:
-            raise ValueError("tip_radius_um must be <= start_radius_um")
-        return self
+    @classmethod
+    def rules(cls, given: dict) -> Iterator[RuleError]:
+        """Yield a way out of the soma given in no way or in two, and thick tips."""
+        yield from _one_of(given, "stems", "trunk")
+        start, tip = given.get("start_radius_um"), given.get("tip_radius_um")
+        numbers = all(isinstance(value, int | float) for value in (start, tip))
+        if numbers and tip > start:
+            rule = f"= {tip:g} must be <= start_radius_um = {start:g}"
+            yield RuleError(rule, field="tip_radius_um")
 
 
-class Description(_Plain):
+class Description(Part):
     """A cell type in a few lines: where its soma lies and what grows from it.
 
     Attributes
@@ -187,36 +216,66 @@ class Description(_Plain):
         Everything that leaves the soma.
     """
 
-    name: Annotated[str, Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9_\-]*$")]
-    cortex_thickness_um: Positive
-    soma_radius_um: Positive
-    soma_depths_um: Annotated[tuple[Positive, ...], Field(min_length=1)]
+    name: Annotated[str, AfterValidator(_check_file_name)]
+    cortex_thickness_um: LengthUm
+    soma_radius_um: LengthUm
+    soma_depths_um: Annotated[tuple[Depth, ...], AfterValidator(_check_not_empty)]
     size_spread: Annotated[float, Field(ge=0, le=0.5)] = 0.1
-    neurites: Annotated[tuple[Neurite, ...], Field(min_length=1)]
+    neurites: Annotated[tuple[Neurite, ...], AfterValidator(_check_not_empty)]
 
-    @model_validator(mode="after")
-    def _check(self) -> Description:
-        for depth_um in self.soma_depths_um:
-            self._check_inside("soma_depths_um", depth_um, depth_um)
-            for row, neurite in enumerate(self.neurites):
-                field = f"neurites[{row}]"
-                if neurite.trunk is not None:
-                    end_um = depth_um - neurite.trunk.height_um(depth_um)
-                    self._check_inside(f"{field}.trunk ends", end_um, depth_um)
-                for column, part in enumerate(neurite.parts):
-                    middle_um = depth_um - sum(part.heights_um(depth_um)) / 2
-                    place = f"{field}.parts[{column}] has its middle"
-                    self._check_inside(place, middle_um, depth_um)
-        return self
 
-    def _check_inside(self, what: str, at_um: float, soma_depth_um: float) -> None:
-        if not 0 < at_um < self.cortex_thickness_um:
-            raise ValueError(
-                f"{what} at depth {at_um:g} um for a soma at {soma_depth_um:g} um, "
-                f"must lie between 0 and cortex_thickness_um"
-            )
+class EnvelopeError(CircuitgenError):
+    """A neurite cannot grow as described: mend the field that the message names.
+
+    Parameters
+    ----------
+    place : tuple
+        Keys and list places that lead to the field.
+    rule : str
+        What is wrong, in words that follow the field's name.
+    """
+
+    def __init__(self, place: tuple[str | int, ...], rule: str):
+        parts = (part + 1 if isinstance(part, int) else part for part in place)
+        super().__init__(f"{'.'.join(map(str, parts))} {rule}")
+        self.place, self.rule = place, rule
+
+
+def check_description(document: Document) -> Description:
+    """Return a document's description; `InputError` has every problem and its line."""
+    description = validate_document(document, Description)
+    problems = list(_outside_cortex(document, description))
+    if problems:
+        raise InputError(problems)
+    return description
 
 
 def read_description(path: Path) -> Description:
-    """Read a description, or raise `InputError` with every problem and its line."""
-    return validate_document(read_document(Path(path)), Description)
+    """Read a description; `InputError` has every problem and its line."""
+    return check_description(read_document(Path(path)))
+
+
+def _outside_cortex(document: Document, description: Description) -> Iterator[Problem]:
+    """Yield a problem for all that lies above the pia or below the cortex."""
+    deepest_um = description.cortex_thickness_um
+    limits = f"must lie between 0 and cortex_thickness_um = {deepest_um:g}"
+    for index, soma_um in enumerate(description.soma_depths_um):
+        if not 0 < soma_um < deepest_um:
+            place = ("soma_depths_um", index)
+            yield document.problem(place, f"= {soma_um:g} {limits}")
+            continue
+        for place, what, depth_um in _depths(description, soma_um):
+            if not 0 < depth_um < deepest_um:
+                rule = f"{what} at depth {depth_um:g} um for a soma at {soma_um:g}"
+                yield document.problem(place, f"{rule}, {limits}")
+
+
+def _depths(description: Description, soma_um: float) -> Iterator[tuple]:
+    """Yield the depths at which trunks end and the bodies of envelopes lie."""
+    for row, neurite in enumerate(description.neurites):
+        if neurite.trunk is not None:
+            end_um = soma_um - neurite.trunk.height_um(soma_um)
+            yield ("neurites", row, "trunk"), "ends", end_um
+        for column, body in enumerate(neurite.parts):
+            middle_um = soma_um - sum(body.heights_um(soma_um)) / 2
+            yield ("neurites", row, "parts", column), "has its middle", middle_um

@@ -8,12 +8,11 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from itertools import count
 
 import numpy as np
 from scipy.special import betaincinv
 
-from circuitgen.morphology.describe import Neurite, Part, Stems
+from circuitgen.morphology.describe import Body, Neurite, Stems
 
 # draw(purpose, n) gives n rows of four uniform numbers, the same for every call.
 Draw = Callable[[str, int], np.ndarray]
@@ -22,9 +21,10 @@ EDGE_UM = 10.0  # carrier points keep this far from the pia and from white matte
 CLEARANCE_UM = 6.0  # and this far outside the ends of the stems
 SKELETON_STEP_UM = 8.0
 LEAN = 0.06  # a trunk's end lies up to this share of its length off the axis
-OFF_CENTRE = 0.2  # a part's centre lies up to this share of its radius off the axis
+OFF_CENTRE = 0.2  # a body's centre lies up to this share of its radius off the axis
 ROW_STEP_UM = 8.0
 ROW_JITTER_UM = 1.0
+_MORE = (2, 8, 32)  # draw this many times the points wanted; some fall outside
 
 
 @dataclass(frozen=True)
@@ -63,74 +63,76 @@ def _disc(radius_um: float, first: np.ndarray, second: np.ndarray) -> np.ndarray
     return np.stack([radius * np.cos(angle), radius * np.sin(angle)], axis=1)
 
 
-def _centre(part: Part, scale: float, draw: Draw, purpose: str) -> np.ndarray:
+def _centre(body: Body, scale: float, draw: Draw, purpose: str) -> np.ndarray:
     row = draw(f"{purpose} centre", 1)
-    return _disc(part.radius_um * scale * OFF_CENTRE, row[:, 0], row[:, 1])
+    return _disc(body.radius_um * scale * OFF_CENTRE, row[:, 0], row[:, 1])
 
 
-def _ellipsoid(part: Part, low: float, high: float, site: Site, rows) -> np.ndarray:
+def _ellipsoid(body: Body, low: float, high: float, site: Site, rows) -> np.ndarray:
     # r^2 ~ Beta(3/2, 2) makes the density fall as 1 - r^2, as in the disc.
     radius = np.sqrt(betaincinv(1.5, 2.0, rows[:, 0]))
     up = 2.0 * rows[:, 1] - 1.0
-    aside = radius * np.sqrt(1.0 - up**2) * part.radius_um * site.scale
+    aside = radius * np.sqrt(1.0 - up**2) * body.radius_um * site.scale
     angle = 2.0 * np.pi * rows[:, 2]
     height = (low + high) / 2.0 + radius * up * (high - low) / 2.0
     return np.stack([aside * np.cos(angle), height, aside * np.sin(angle)], axis=1)
 
 
-def _cylinder(part: Part, low: float, high: float, site: Site, rows) -> np.ndarray:
+def _cylinder(body: Body, low: float, high: float, site: Site, rows) -> np.ndarray:
     low = max(low, site.soma_depth_um - site.cortex_thickness_um + EDGE_UM)
     high = min(high, site.soma_depth_um - EDGE_UM)
-    aside = _disc(part.radius_um * site.scale, rows[:, 0], rows[:, 1])
+    aside = _disc(body.radius_um * site.scale, rows[:, 0], rows[:, 1])
     height = low + (high - low) * rows[:, 2]
     return np.stack([aside[:, 0], height, aside[:, 1]], axis=1)
 
 
-def _rows(part: Part, site: Site, draw: Draw, purpose: str, points_n: int):
+def _rows(body: Body, site: Site, draw: Draw, purpose: str, points_n: int):
     """Points along short vertical rows whose places fill a cylinder."""
-    low, high = part.heights_um(site.soma_depth_um)
-    per_row = int(part.row_length_um // ROW_STEP_UM) + 1
+    low, high = body.heights_um(site.soma_depth_um)
+    per_row = int(body.row_length_um // ROW_STEP_UM) + 1
     row, step = np.divmod(np.arange(points_n), per_row)
     feet = draw(f"{purpose} rows", int(row[-1]) + 1)
-    foot = _cylinder(part, low, high - part.row_length_um, site, feet)
+    highest = max(high - body.row_length_um, low)
+    foot = _cylinder(body, low, highest, site, feet)
     points = foot[row]
     points[:, 1] += step * ROW_STEP_UM
     jitter = draw(purpose, points_n)[:, :3] - 0.5
     return points + 2.0 * ROW_JITTER_UM * jitter
 
 
-def _draw_part(part: Part, site: Site, draw: Draw, purpose: str, points_n: int):
-    low, high = part.heights_um(site.soma_depth_um)
-    if part.shape == "rows":
-        points = _rows(part, site, draw, purpose, points_n)
-    elif part.shape == "cylinder":
-        points = _cylinder(part, low, high, site, draw(purpose, points_n))
+def _draw_body(body: Body, site: Site, draw: Draw, purpose: str, points_n: int):
+    low, high = body.heights_um(site.soma_depth_um)
+    if body.shape == "rows":
+        points = _rows(body, site, draw, purpose, points_n)
+    elif body.shape == "cylinder":
+        points = _cylinder(body, low, high, site, draw(purpose, points_n))
     else:
-        points = _ellipsoid(part, low, high, site, draw(purpose, points_n))
-    points[:, [0, 2]] += _centre(part, site.scale, draw, purpose)
+        points = _ellipsoid(body, low, high, site, draw(purpose, points_n))
+    points[:, [0, 2]] += _centre(body, site.scale, draw, purpose)
     return points
 
 
 def carrier_points(
-    part: Part, site: Site, draw: Draw, purpose: str, points_n: int, clear_um: float
-) -> np.ndarray:
-    """Draw carrier points in one part of an envelope.
+    body: Body, site: Site, draw: Draw, purpose: str, points_n: int, clear_um: float
+) -> np.ndarray | None:
+    """Draw carrier points in one body of an envelope.
 
     Points outside the cortex or within `clear_um` of the soma centre are left out;
     asking for more points keeps the earlier ones.
 
     Returns
     -------
-    ndarray of float64, shape (points_n, 3)
+    ndarray of float64, shape (points_n, 3), or None
+        None when hardly any place is left in the body.
     """
-    for doubling in count(1):
-        points = _draw_part(part, site, draw, purpose, points_n * 2**doubling)
+    for more in _MORE:
+        points = _draw_body(body, site, draw, purpose, points_n * more)
         depth = site.soma_depth_um - points[:, 1]
         inside = (depth > EDGE_UM) & (depth < site.cortex_thickness_um - EDGE_UM)
         inside &= (points**2).sum(axis=1) > clear_um**2
         if inside.sum() >= points_n:
             return points[inside][:points_n]
-    raise AssertionError("unreachable: the loop is endless")
+    return None
 
 
 def _stem_directions(stems: Stems, draw: Draw) -> np.ndarray:
@@ -142,9 +144,8 @@ def _stem_directions(stems: Stems, draw: Draw) -> np.ndarray:
     turn = np.arange(stems_n) + rows[0, 1] * stems_n + (spread[:, 0] - 0.5) * 0.66
     azimuth = 2.0 * np.pi * turn / stems_n
     low, high = np.sin(np.radians(stems.elevation_deg))
-    # Strata of equal solid angle, visited with a stride so that neighbours differ.
-    stratum = (np.arange(stems_n) * (stems_n // 2 + 1) + spread[:, 1]) % stems_n
-    up = low + (high - low) * stratum / stems_n
+    # One stem in each stratum of equal solid angle, in random order.
+    up = low + (high - low) * (np.argsort(spread[:, 2]) + spread[:, 1]) / stems_n
     aside = np.sqrt(1.0 - up**2)
     return np.stack([aside * np.cos(azimuth), up, aside * np.sin(azimuth)], axis=1)
 

@@ -13,10 +13,16 @@ import numpy as np
 
 from circuitgen import __version__
 from circuitgen.core.draws import uniforms
+from circuitgen.core.errors import InputError
 from circuitgen.core.files import whole_file
 from circuitgen.morphology import branches
 from circuitgen.morphology.arbor import Kind
-from circuitgen.morphology.describe import Description, Neurite, read_description
+from circuitgen.morphology.describe import (
+    Description,
+    EnvelopeError,
+    Neurite,
+    check_description,
+)
 from circuitgen.morphology.envelope import (
     Draw,
     Site,
@@ -26,11 +32,14 @@ from circuitgen.morphology.envelope import (
     lay_skeleton,
 )
 from circuitgen.morphology.spanning import balanced_tree
+from circuitgen.spec import read_document
 
 _KINDS = {"axon": Kind.AXON, "basal": Kind.BASAL, "apical": Kind.APICAL}
 _TWIG_UM = {"axon": 8.0, "basal": 12.0, "apical": 12.0}
-_CABLE_TOLERANCE = 0.03
+_CABLE_TOLERANCE = 0.03  # good enough to stop trying
+_CABLE_MISS = 0.2  # too far from what was described
 _TRIES = 8
+_MOST_POINTS = 10_000
 
 
 @dataclass(frozen=True)
@@ -120,36 +129,56 @@ def _grow_neurite(
         description.cortex_thickness_um,
         float(vary[1]),
     )
-    skeleton = lay_skeleton(neurite, site, draw)
     wanted_um = neurite.cable_um * float(vary[0])
+    tree = _meet_cable(neurite, number, site, draw, wanted_um)
+    return _finish(neurite, *tree)
+
+
+def _meet_cable(neurite: Neurite, number: int, site: Site, draw: Draw, wanted_um: float):
+    """Try numbers of carrier points until the cable is as long as wanted."""
+    skeleton = lay_skeleton(neurite, site, draw)
     points_n = wanted_um / 20.0
-    best = None
+    best = (np.inf, 0.0, None)
     for _ in range(_TRIES):
-        position, parent = _grow_points(neurite, site, skeleton, draw, points_n)
-        cable_um = branches.steps_um(position, parent).sum()
+        points = _draw_points(neurite, number, site, draw, min(points_n, _MOST_POINTS))
+        tree = _span(neurite, site, skeleton, draw, points)
+        cable_um = float(branches.steps_um(*tree).sum())
         miss = abs(cable_um / wanted_um - 1.0)
-        if best is None or miss < best[0]:
-            best = (miss, position, parent)
-        if miss < _CABLE_TOLERANCE:
+        if miss < best[0]:
+            best = (miss, cable_um, tree)
+        full = points_n >= _MOST_POINTS and cable_um < wanted_um
+        if miss < _CABLE_TOLERANCE or full:
             break
         # The length of a spanning tree of n points in a body goes as n^(2/3).
         points_n *= float(np.clip((wanted_um / cable_um) ** 1.5, 0.25, 4.0))
-    return _finish(neurite, best[1], best[2])
+    if best[0] > _CABLE_MISS:
+        rule = f"= {neurite.cable_um:g} does not suit the envelope, which takes about "
+        raise EnvelopeError(("neurites", number, "cable_um"), f"{rule}{best[1]:.0f}")
+    return best[2]
 
 
-def _grow_points(
-    neurite: Neurite, site: Site, skeleton: Skeleton, draw: Draw, points_n: float
-):
-    """Draw carrier points, span them, and make the branches natural."""
-    shares = np.array([part.share for part in neurite.parts])
+def _draw_points(
+    neurite: Neurite, number: int, site: Site, draw: Draw, points_n: float
+) -> np.ndarray:
+    """Draw the carrier points of all bodies of an envelope."""
+    shares = np.array([body.share for body in neurite.parts])
     counts = np.maximum(np.rint(points_n * shares / shares.sum()), 1).astype(int)
     clear_um = clearance_um(neurite, site)
-    points = np.concatenate(
-        [
-            carrier_points(part, site, draw, f"part {row}", int(counts[row]), clear_um)
-            for row, part in enumerate(neurite.parts)
-        ]
-    )
+    drawn = []
+    for row, body in enumerate(neurite.parts):
+        count = int(counts[row])
+        points = carrier_points(body, site, draw, f"part {row}", count, clear_um)
+        if points is None:
+            rule = "has hardly a place inside the cortex and clear of the soma"
+            raise EnvelopeError(("neurites", number, "parts", row), rule)
+        drawn.append(points)
+    return np.concatenate(drawn)
+
+
+def _span(
+    neurite: Neurite, site: Site, skeleton: Skeleton, draw: Draw, points: np.ndarray
+):
+    """Span the carrier points, and make the branches natural."""
     bare_um = min(neurite.bare_um, skeleton.path_um.max()) - 1e-6
     free = np.flatnonzero(skeleton.path_um >= bare_um)
     order, joined = balanced_tree(
@@ -185,17 +214,19 @@ def _finish(neurite: Neurite, position: np.ndarray, parent: np.ndarray):
     return position[order], np.where(above < 0, -1, number[above]), radius[order]
 
 
-def _header(neuron: GrownNeuron, description_name: str, index: int, seed: int):
+def _header(description: Description, file_name: str, index: int, seed: int):
+    depths = description.soma_depths_um
     return (
-        f"{neuron.name}",
+        f"{description.name}, number {index + 1}",
         "SYNTHETIC: a grown stand-in with invented statistics, not a measured neuron.",
         "Grown as a spanning tree that balances wire against path length inside an",
         "envelope (Cuntz, Forstner, Borst & Hausser 2010, PLoS Comput Biol 6:e1000877).",
-        f"Description: {description_name}, seed {seed}, number {index + 1}",
+        f"Description {file_name}, seed {seed}, number {index + 1}",
         f"circuitgen {__version__}",
-        "Micrometres, y toward the pia, soma centre at the origin.",
-        "Columns: sample, type (1 soma, 2 axon, 3 basal, 4 apical), x, y, z, radius,",
-        "parent",
+        f"Grown for a soma {depths[index % len(depths)]:g} um below the pia, cortex "
+        f"{description.cortex_thickness_um:g} um thick",
+        "Micrometres; y toward the pia; soma centre at the origin",
+        "sample type x y z radius parent (1 soma, 2 axon, 3 basal, 4 apical)",
     )
 
 
@@ -234,16 +265,22 @@ def grow_files(
     Raises
     ------
     InputError
-        If the description is wrong.
+        If the description is wrong; nothing is written then.
     """
     description_path, out_dir = Path(description_path), Path(out_dir)
-    description = read_description(description_path)
-    written = []
-    for index in range(count or len(description.soma_depths_um)):
-        neuron = grow(description, index, seed)
-        header = _header(neuron, description_path.name, index, seed)
-        path = out_dir / f"{neuron.name}.swc"
+    document = read_document(description_path)
+    description = check_description(document)
+    if count is None:
+        count = len(description.soma_depths_um)
+    texts = {}
+    for index in range(count):
+        try:
+            neuron = grow(description, index, seed)
+        except EnvelopeError as error:
+            raise InputError([document.problem(error.place, error.rule)]) from None
+        header = _header(description, description_path.name, index, seed)
+        texts[out_dir / f"{neuron.name}.swc"] = _text(neuron, header)
+    for path, text in texts.items():
         with whole_file(path) as partial:
-            partial.write_text(_text(neuron, header), encoding="utf-8", newline="\n")
-        written.append(path)
-    return written
+            partial.write_text(text, encoding="utf-8", newline="\n")
+    return list(texts)
