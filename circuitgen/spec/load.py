@@ -11,7 +11,7 @@ from circuitgen.core.errors import InputError, Problem, nearest_name
 from circuitgen.spec.document import Document, read_document
 from circuitgen.spec.models import CellType, CellTypeEntry, Spec, SpecFile
 from circuitgen.spec.recordings import Recording, inline_recordings, read_recordings
-from circuitgen.spec.validation import Fault, shown, validate
+from circuitgen.spec.validation import Fault, shown, unknown_name, validate
 
 
 def _part(data: object, key: str) -> dict:
@@ -37,7 +37,7 @@ def _layer_faults(data: dict) -> Iterator[Fault]:
             for name in _part(entry, key) if names else ():
                 if name not in names:
                     place = ("cell_types", cell_type, key, name)
-                    yield place, "is not a layer of the spec", nearest_name(name, names)
+                    yield place, *unknown_name(name, names, "layer of the spec")
 
 
 def _group_faults(data: dict) -> Iterator[Fault]:
@@ -52,8 +52,8 @@ def _group_faults(data: dict) -> Iterator[Fault]:
             if not isinstance(member, str):
                 continue
             if types and member not in types:
-                rule = f"= {shown(member)} is not a cell type of the spec"
-                yield place, rule, nearest_name(member, types)
+                rule, nearest = unknown_name(member, types, "cell type of the spec")
+                yield place, f"= {shown(member)} {rule}", nearest
             elif member in members[:index]:
                 yield place, f"= {shown(member)} is named twice", None
 
@@ -67,7 +67,8 @@ def _nearest_file(folder: Path, pattern: str) -> str | None:
     """Return the file beside the wanted one whose name is most like it."""
     wanted = Path(pattern)
     try:
-        names = sorted(entry.name for entry in os.scandir(folder / wanted.parent))
+        entries = os.scandir(folder / wanted.parent)
+        names = sorted(entry.name for entry in entries if entry.is_file())
     except (OSError, ValueError):
         return None
     near = nearest_name(wanted.name, names)
@@ -122,7 +123,8 @@ def _recordings(
     document: Document, *, read_table: bool
 ) -> tuple[tuple[Recording, ...], list[Problem]]:
     data = document.data
-    names = {**_part(data, "cell_types"), **_part(data, "groups")}
+    types = _part(data, "cell_types")
+    names = {**types, **_part(data, "groups")} if types else {}
     outcomes: Iterator[Recording | Problem] = iter(())
     if read_table:
         table = document.path.parent / data["recordings"]

@@ -12,7 +12,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from circuitgen.core.errors import InputError, Problem, nearest_name
+from circuitgen.core.errors import InputError, Problem
 from circuitgen.spec.document import Document, read_text
 from circuitgen.spec.fields import LengthUm, PositionUm
 from circuitgen.spec.validation import (
@@ -177,8 +177,8 @@ def _check_row(
     for column in ("pre_type", "post_type"):
         name = values.get(column)
         if names and isinstance(name, str) and name not in names:
-            rule = f"= {shown(name)} is no cell type or group of the spec"
-            faults.append(((column,), rule, nearest_name(name, names)))
+            rule, nearest = unknown_name(name, names, "cell type or group of the spec")
+            faults.append(((column,), f"= {shown(name)} {rule}", nearest))
     return row, faults
 
 
@@ -258,7 +258,7 @@ def _header_faults(header: list[str]) -> Iterator[Fault]:
         if not name:
             yield (), f"column {index + 1} has no name", None
         elif name not in COLUMNS:
-            rule, nearest = unknown_name(name, COLUMNS, kind="column")
+            rule, nearest = unknown_name(name, COLUMNS, "known column")
             yield (name,), rule, nearest
         elif name in header[:index]:
             rule = f"is column {header.index(name) + 1} and column {index + 1}"

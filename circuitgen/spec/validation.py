@@ -16,6 +16,7 @@ from circuitgen.spec.document import Document, Location
 Fault = tuple[Location, str, str | None]
 
 _SHOWN_CHARACTERS = 60
+_NAMES_LISTED = 20
 _WORDED = "worded"
 _UNIT = re.compile(
     r"_((?:per_)?(?:[nuµμcm]?m[23]?|microns?|micromet(?:er|re)s?|millimet(?:er|re)s?"
@@ -94,17 +95,23 @@ def _worded(place: Location, rule: str, nearest: str | None) -> InitErrorDetails
 
 
 def unknown_name(
-    name: str, known: Collection[str], kind: str = "key"
+    name: str, known: Collection[str], kind: str = "known key"
 ) -> tuple[str, str | None]:
-    """Say what is wrong with a key; a known one in another unit gets a hint."""
+    """Say that a name is none of those known; return the rule and the nearest one.
+
+    A known name in another unit, or in none, gets a hint.
+    """
     stem = _UNIT.sub("", name)
     same_stem = [other for other in known if _UNIT.sub("", other) == stem]
     nearest = same_stem[0] if same_stem else nearest_name(name, known)
     if nearest is None:
-        return f"is not a known {kind}; known here: {', '.join(known)}", None
+        listed = list(known)
+        more = ", …" if len(listed) > _NAMES_LISTED else ""
+        names = ", ".join(shown(other) for other in listed[:_NAMES_LISTED])
+        return f"is not a {kind}; there are {names}{more}", None
     if same_stem and (unit := _UNIT.search(nearest)):
-        return f"is not a known {kind}; the unit here is {unit[1]}", nearest
-    return f"is not a known {kind}", nearest
+        return f"is not a {kind}; the unit here is {unit[1]}", nearest
+    return f"is not a {kind}", nearest
 
 
 def shown(value: object) -> str:
@@ -181,7 +188,8 @@ def _in_words(error: dict, model: type[BaseModel]) -> tuple[str, str | None]:
         rule = f"= {shown(value)} must be one of {', '.join(names)}"
         return rule, nearest_name(value, names)
     if kind == "too_short":
-        return f"must have at least {context['min_length']} entry", None
+        least = context["min_length"]
+        return f"must have at least {least} {'entry' if least == 1 else 'entries'}", None
     if kind in _KINDS:
         quotable = kind == "string_type" and isinstance(value, int | float)
         hint = "; write it in quotes" if quotable else ""
