@@ -39,7 +39,7 @@ _TWIG_UM = {"axon": 8.0, "basal": 12.0, "apical": 12.0}
 _CABLE_TOLERANCE = 0.03  # good enough to stop trying
 _CABLE_MISS = 0.2  # too far from what was described
 _TRIES = 8
-_MOST_POINTS = 10_000
+_MOST_POINTS = 5_000
 
 
 @dataclass(frozen=True)
