@@ -47,7 +47,7 @@ thickness_um: 0
 
 thickness_um: 300
 thickness_um: 3e9
-10: layers.2.thickness_um = 3000000000.0 must be <= 1e+06
+10: layers.2.thickness_um = 3000000000 must be <= 1e+06
 
 sign: excitatory
 sign: excitory

@@ -124,7 +124,7 @@ def _recordings(
 ) -> tuple[tuple[Recording, ...], list[Problem]]:
     data = document.data
     types = _part(data, "cell_types")
-    names = {**types, **_part(data, "groups")} if types else {}
+    names = (*types, *_part(data, "groups")) if types else ()
     outcomes: Iterator[Recording | Problem] = iter(())
     if read_table:
         table = document.path.parent / data["recordings"]

@@ -6,7 +6,8 @@ import csv
 import io
 import math
 import re
-from collections.abc import Collection, Iterator
+from collections.abc import Iterator
+from functools import lru_cache
 from pathlib import Path
 from typing import Annotated, Literal
 
@@ -169,16 +170,22 @@ def _synapse_rules(given: dict) -> Iterator[RuleError]:
         yield RuleError(rule, field="synapses_mean")
 
 
+@lru_cache(maxsize=1024)
+def _unknown_type(name: str, names: tuple[str, ...]) -> tuple[str, str | None]:
+    # One misspelt type of a spec comes back in many rows.
+    rule, nearest = unknown_name(name, names, "cell type or group of the spec")
+    return f"= {shown(name)} {rule}", nearest
+
+
 def _check_row(
-    values: dict, names: Collection[str]
+    values: dict, names: tuple[str, ...]
 ) -> tuple[RecordingRow | None, list[Fault]]:
     """Check one row by itself and against the names of types and groups, if any."""
     row, faults = validate(values, RecordingRow)
     for column in ("pre_type", "post_type"):
         name = values.get(column)
         if names and isinstance(name, str) and name not in names:
-            rule, nearest = unknown_name(name, names, "cell type or group of the spec")
-            faults.append(((column,), f"= {shown(name)} {rule}", nearest))
+            faults.append(((column,), *_unknown_type(name, names)))
     return row, faults
 
 
@@ -189,7 +196,7 @@ def _place(row: RecordingRow, number: int, file: str, line: int) -> Recording:
 
 
 def inline_recordings(
-    document: Document, names: Collection[str]
+    document: Document, names: tuple[str, ...]
 ) -> Iterator[Recording | Problem]:
     """Yield the good recordings and the faults of the rows that a spec lists itself.
 
@@ -278,7 +285,7 @@ def _typed(column: str, text: str) -> object:
     return int(number) if is_whole else number
 
 
-def read_recordings(path: Path, names: Collection[str]) -> Iterator[Recording | Problem]:
+def read_recordings(path: Path, names: tuple[str, ...]) -> Iterator[Recording | Problem]:
     """Yield the good recordings and the faults of a CSV file.
 
     Lines that begin with ``#`` and blank lines are skipped. If the header is wrong,

@@ -120,6 +120,8 @@ def shown(value: object) -> str:
         return {None: "nothing", True: "true", False: "false"}[value]
     if isinstance(value, dict | tuple | list):
         return "'key: value' lines" if isinstance(value, dict) else "a list"
+    if isinstance(value, float):
+        return f"{value:.12g}"
     text = f"'{value}'" if isinstance(value, str) else str(value)
     if len(text) > _SHOWN_CHARACTERS:
         text = text[:_SHOWN_CHARACTERS] + "…"
@@ -193,7 +195,10 @@ def _in_words(error: dict, model: type[BaseModel]) -> tuple[str, str | None]:
     if kind in _KINDS:
         quotable = kind == "string_type" and isinstance(value, int | float)
         hint = "; write it in quotes" if quotable else ""
-        return f"= {shown(value)} must be {_KINDS[kind]}{hint}", None
+        # Not `shown`, which drops the point of 2.0: it is what is wrong with it here.
+        is_point_wrong = kind.startswith("int_") and isinstance(value, float)
+        text = str(value) if is_point_wrong else shown(value)
+        return f"= {text} must be {_KINDS[kind]}{hint}", None
     return f"= {shown(value)}: {error['msg']}", None
 
 
