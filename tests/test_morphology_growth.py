@@ -205,6 +205,20 @@ class TestShippedFiles:
                 assert word in text
             assert f"{type_of(path)}.yaml, seed {SEED}, number" in text
 
+    @pytest.mark.filterwarnings("ignore")  # navis calls pandas in outdated ways
+    def test_another_reader_finds_the_same_neuron(self, shipped):
+        import navis
+
+        for name in ("L23_basket_1", "L5_thick_3"):
+            neuron = navis.read_swc(FOLDER / f"{name}.swc")
+            file = shipped[name]
+            # navis counts the pieces from the soma's centre to the stems as well.
+            stems = np.linalg.norm(file.position_um[file.parent == 0], axis=1).sum()
+            cable = file.step_um.sum() + stems
+            assert neuron.cable_length == pytest.approx(cable, rel=1e-6)
+            assert neuron.n_trees == 1
+            assert (neuron.nodes.label.astype(int) == file.kind).all()
+
     def test_somata_are_spread_over_their_layer(self, shipped):
         for path in DESCRIPTIONS:
             upper, lower = LAYERS_UM[path.stem.partition("_")[0]]
