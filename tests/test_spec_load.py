@@ -35,6 +35,7 @@ def test_good_spec(tmp_path):
     pyramidal, basket = spec.cell_types
     assert spec.type_names == ("L23_pyramidal", "L23_basket")
     assert (pyramidal.name, pyramidal.sign) == ("L23_pyramidal", "excitatory")
+    assert (pyramidal.is_excitatory, basket.is_excitatory) == (True, False)
     assert (pyramidal.density_per_mm3, pyramidal.count) == ({"L23": 60000}, {})
     assert (basket.density_per_mm3, basket.count) == ({}, {"L1": 5, "L23": 40})
     assert pyramidal.morphologies == tuple(
@@ -228,6 +229,7 @@ def test_missing_parts(tmp_path, key, blank):
         "arbors/[",
         '"arbors/\\0.swc"',
         "x" * 5000,
+        "x" * 300 + "/cell.swc",
         "../" * 100 + "none.swc",
     ],
 )

@@ -93,11 +93,13 @@ def test_full_and_least_row(tmp_path, way):
     assert isinstance(full.tested_n, int)
     assert isinstance(full.distance_low_um, float)
     assert full.measured_probability == 4 / 50
+    assert full.window_um() == (0, 100.5)
     blank = dict.fromkeys(PUBLISHED_COLUMNS)
     defaults = {"source": "", "distance_kind": "soma", "use": "fit"}
     for column, value in {**blank, **defaults, **LEAST_ROW}.items():
         assert getattr(least, column) == value
     assert least.measured_probability == 0.25
+    assert least.window_um() == (0, float("inf"))
     for number, recording in enumerate(spec.recordings):
         place_found = (recording.row, recording.file, recording.line)
         assert place_found == (number + 1, str(place), first + number)

@@ -98,7 +98,7 @@ class _Files:
             files = set()
         if not files:
             folder = _absolute(self.folder, str(Path(pattern).parent))
-            state = "" if folder.is_dir() else ", which does not exist"
+            state = "" if os.path.isdir(folder) else ", which does not exist"
             rule = f"= {shown(pattern)} finds no file in the folder {folder}{state}"
             nearest = _nearest_file(self.folder, pattern)
             self.problems.append(self.document.problem(place, rule, nearest))

@@ -152,6 +152,11 @@ class CellType(CellTypeEntry):
 
     name: str
 
+    @property
+    def is_excitatory(self) -> bool:
+        """True for an excitatory type."""
+        return self.sign == "excitatory"
+
 
 class AppositionRules(Part):
     """What counts as an apposition.

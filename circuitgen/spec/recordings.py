@@ -120,6 +120,11 @@ class Recording(RecordingRow):
             return self.probability
         return self.connected_n / self.tested_n
 
+    def window_um(self) -> tuple[float, float]:
+        """Return the window of distances; 0 and infinity where the row has no bound."""
+        high = self.distance_high_um
+        return self.distance_low_um or 0.0, math.inf if high is None else high
+
 
 COLUMNS = tuple(RecordingRow.model_fields)
 _TEXT_COLUMNS = ("source", "pre_type", "post_type", "distance_kind", "use")
