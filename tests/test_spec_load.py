@@ -340,6 +340,19 @@ def test_spec_and_recordings_are_reported_together_in_order(tmp_path):
     assert found[3].nearest == "L23_all"
 
 
+def test_a_list_whose_only_entry_is_wrong_is_not_called_empty(tmp_path):
+    text = edited(SPEC, "  - name: L23\n    thickness_um: 300\n", "")
+    text = edited(text, "thickness_um: 120", "thickness_um: 0")
+    text = edited(text, "{L23: 60000}", "{L1: -1}")
+    text = edited(text, "      L23: 40\n", "")
+    text = edited(text, "[soma, basal, apical]", "[spine]")
+    assert [one.field for one in problems(tmp_path, text)] == [
+        "layers.1.thickness_um",
+        "cell_types.L23_pyramidal.density_per_mm3.L1",
+        "cell_types.L23_pyramidal.targets.1",
+    ]
+
+
 def test_a_wrong_type_is_not_blamed_twice(tmp_path):
     text = edited(SPEC, "sign: excitatory", "sign: 3")
     assert len(problems(tmp_path, text)) == 1

@@ -101,17 +101,17 @@ class Recording(RecordingRow):
     Attributes
     ----------
     row : int
-        Data row, counted from 1.
+        Data row, counted from 1; 0 for one that no file holds.
     file : str
         The file that holds it, as the user would name it: for messages, not for
         tables, since it depends on where the command ran.
-    line : int
+    line : int or None
         Its line in that file, counted from 1.
     """
 
-    row: int
-    file: str
-    line: int
+    row: int = 0
+    file: str = ""
+    line: int | None = None
 
     @property
     def measured_probability(self) -> float | None:

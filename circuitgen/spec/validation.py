@@ -81,11 +81,20 @@ class Part(BaseModel):
         try:
             part = handler(given)
         except ValidationError as failure:
-            for error in failure.errors(include_url=False):
+            for error in _own_errors(failure):
                 errors.append(_worded(error["loc"], *_in_words(error, cls)))
         if errors:
             raise ValidationError.from_exception_data(cls.__name__, errors)
         return part
+
+
+def _own_errors(failure: ValidationError) -> Iterator[dict]:
+    """Yield the errors, less those of lists that lack only their faulty entries."""
+    for error in failure.errors(include_url=False):
+        if error["type"] == "too_short":
+            if len(error["input"]) >= error["ctx"]["min_length"]:
+                continue
+        yield error
 
 
 def _worded(place: Location, rule: str, nearest: str | None) -> InitErrorDetails:
@@ -210,7 +219,7 @@ def validate(
         return model.model_validate(data), []
     except ValidationError as failure:
         faults = []
-        for error in failure.errors(include_url=False):
+        for error in _own_errors(failure):
             # A fault of a mapping's key carries a mark behind the key itself.
             place = tuple(part for part in error["loc"] if part != "[key]")
             faults.append((place, *_in_words(error, model)))
