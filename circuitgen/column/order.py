@@ -40,14 +40,25 @@ def hilbert_index(column: np.ndarray, row: np.ndarray, bits: int) -> np.ndarray:
     return index
 
 
-def order_in_space(type_index: np.ndarray, position_um: np.ndarray) -> np.ndarray:
+def order_in_space(
+    type_index: np.ndarray, position_um: np.ndarray, corner_um: np.ndarray
+) -> np.ndarray:
     """Return the order of cells: by type, along Hilbert's curve, from the pia down.
 
     The curve runs through square tiles of `TILE_UM` in the x-y plane; within a tile
     cells go from the pia downward.
+
+    Parameters
+    ----------
+    type_index : int (n,)
+        Cell type of every cell.
+    position_um : float64 (n, 3)
+        Soma centres.
+    corner_um : float64 (2, 3)
+        Lowest and highest corner of a box around all cells; fixes the tiles.
     """
-    tile = np.floor(position_um[:, :2] / TILE_UM).astype(np.int64)
-    tile -= tile.min(axis=0)
-    bits = max(int(tile.max()).bit_length(), 1)
+    low, high = np.asarray(corner_um)[:, :2]
+    tile = np.floor((position_um[:, :2] - low) / TILE_UM).astype(np.int64)
+    bits = int((high - low).max() / TILE_UM).bit_length()
     curve = hilbert_index(tile[:, 0], tile[:, 1], bits)
     return np.lexsort((-position_um[:, 2], curve, type_index))

@@ -22,7 +22,7 @@ from circuitgen.core.draws import uniforms
 SATURATION = 0.38413
 # Proposals per wanted soma after which a layer counts as full.
 _MOST_TRIES = 4000
-# How far the tissue goes on, in radii of the largest soma: its own edge is crowded.
+# How far the tissue goes on, in radii of the soma: its own edge is crowded.
 _MARGIN_RADII = 4.0
 _LEAST_AT_ONCE, _MOST_AT_ONCE = 256, 65536
 _MOST_VOXELS = 8_000_000
@@ -78,13 +78,17 @@ class Packing:
     """
 
     def __init__(self, volume: Volume, widest_um: float):
-        self._margin = np.full(3, _MARGIN_RADII * widest_um)
-        self._margin[:2][np.array(volume.wrap_um) > 0] = 0.0
-        low, high = volume.box_um
-        low, high = low - self._margin, high + self._margin
+        self._volume = volume
+        low, high = self._beyond(volume.box_um, widest_um)
         self._grid = _make_grid(low, high, 2 * widest_um, volume.wrap_um)
         self._places_n = 0
         self._places = kernels.Places(np.zeros((0, 3)), np.zeros(0), np.zeros(0, int))
+
+    def _beyond(self, box, radius_um: float) -> tuple[np.ndarray, np.ndarray]:
+        """Return a box widened, on its open sides, by the tissue that goes on."""
+        margin = np.full(3, _MARGIN_RADII * radius_um)
+        margin[:2][np.array(self._volume.wrap_um) > 0] = 0.0
+        return box[0] - margin, box[1] + margin
 
     def fill(
         self, slab: Slab, wanted: int, radius_um: float, seed: int, stage: str
@@ -95,8 +99,8 @@ class Packing:
         centres, shape (n, 3), in the order in which they were taken; n is less than
         wanted when no place was found for the rest.
         """
-        low, high = slab.volume.slab_box_um(slab.z_low_um, slab.z_high_um)
-        low, high = low - self._margin, high + self._margin
+        box = self._volume.slab_box_um(slab.z_low_um, slab.z_high_um)
+        low, high = self._beyond(box, radius_um)
         per_cell = float(np.prod(high - low)) / slab.volume_um3
         most = int(_MOST_TRIES * per_cell * wanted)
         begin, tried, found = self._places_n, 0, []
