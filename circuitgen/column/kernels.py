@@ -97,20 +97,12 @@ def _link(place, grid, places):
 
 
 @kernel
-def link_all(places_n, grid, places):
-    """List the first `places_n` places by voxel, afresh."""
-    grid.head[:] = -1
-    for place in range(places_n):
-        _link(place, grid, places)
-
-
-@kernel
 def take_places(candidates, is_cell, radius, wanted, places_n, grid, places, chosen):
     """Take free candidates in their order until `wanted` of them are cells.
 
     `places` has room for all candidates beyond `places_n`. `chosen` receives the
-    candidate of each new place. Returns the number of candidates looked at, of new
-    places and of new cells.
+    candidate of each new place. Returns the number of candidates looked at and of new
+    places.
     """
     cells_n = 0
     taken_n = 0
@@ -126,7 +118,7 @@ def take_places(candidates, is_cell, radius, wanted, places_n, grid, places, cho
             taken_n += 1
             cells_n += is_cell[seen]
         seen += 1
-    return seen, taken_n, cells_n
+    return seen, taken_n
 
 
 class Tiles(NamedTuple):

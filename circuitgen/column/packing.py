@@ -9,7 +9,8 @@ nothing is in their way on one side.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -24,13 +25,15 @@ SATURATION = 0.38413
 _MOST_TRIES = 4000
 # How far the tissue goes on, in radii of the soma: its own edge is crowded.
 _MARGIN_RADII = 4.0
+# Turns in which the layers of a type are filled.
+_TURNS = 16
 _LEAST_AT_ONCE, _MOST_AT_ONCE = 256, 65536
 _MOST_VOXELS = 8_000_000
 
 
 @dataclass(frozen=True)
 class Slab:
-    """The part of a volume between two heights, and a place to draw from.
+    """The part of a volume between two heights.
 
     Attributes
     ----------
@@ -55,15 +58,45 @@ class Slab:
         within = (z >= self.z_low_um) & (z < self.z_high_um)
         return within & self.volume.contains(points_um)
 
-    def keeps(self, points_um: np.ndarray) -> np.ndarray:
-        """Tell which places stay taken: not those in the heights of other layers."""
-        z = points_um[:, 2]
-        above = (z >= self.z_low_um) | (self.z_low_um <= 0)
-        return above & ((z < self.z_high_um) | self._is_top)
+    def widened_box_um(self, margin_um: float) -> tuple[np.ndarray, np.ndarray]:
+        """Return a box around the slab, widened where the volume ends openly."""
+        low, high = self.volume.slab_box_um(self.z_low_um, self.z_high_um)
+        is_open = np.array(self.volume.wrap_um) == 0
+        is_bottom = self.z_low_um <= 0
+        is_top = self.z_high_um >= self.volume.thickness_um
+        return (
+            low - margin_um * np.array([*is_open, is_bottom]),
+            high + margin_um * np.array([*is_open, is_top]),
+        )
+
+
+@dataclass
+class _Filling:
+    """Somata of one type and layer, part of them placed."""
+
+    slab: Slab
+    wanted: int
+    seed: int
+    stage: str
+    low: np.ndarray
+    high: np.ndarray
+    tried: int = 0
+    found: int = 0
+    centers: list[np.ndarray] = field(default_factory=list)
 
     @property
-    def _is_top(self) -> bool:
-        return self.z_high_um >= self.volume.thickness_um
+    def boxes_n(self) -> float:
+        """How often the slab fits into the box that proposals come from."""
+        return float(np.prod(self.high - self.low)) / self.slab.volume_um3
+
+    def propose(self, more: int) -> np.ndarray:
+        """Return the next proposals, about enough for `more` somata."""
+        # An eighth of all so far keeps the calls few when most proposals fail.
+        likely = max(2 * self.boxes_n * more, self.tried / 8)
+        at_once = int(np.clip(likely, _LEAST_AT_ONCE, _MOST_AT_ONCE))
+        ids = np.arange(self.tried, self.tried + at_once)
+        draws = uniforms(self.seed, self.stage, ids)
+        return self.low + draws[:, :3] * (self.high - self.low)
 
 
 class Packing:
@@ -78,60 +111,64 @@ class Packing:
     """
 
     def __init__(self, volume: Volume, widest_um: float):
-        self._volume = volume
-        low, high = self._beyond(volume.box_um, widest_um)
-        self._grid = _make_grid(low, high, 2 * widest_um, volume.wrap_um)
+        whole = Slab(volume, 0.0, volume.thickness_um)
+        box = whole.widened_box_um(_MARGIN_RADII * widest_um)
+        self._grid = _make_grid(*box, 2 * widest_um, volume.wrap_um)
         self._places_n = 0
         self._places = kernels.Places(np.zeros((0, 3)), np.zeros(0), np.zeros(0, int))
 
-    def _beyond(self, box, radius_um: float) -> tuple[np.ndarray, np.ndarray]:
-        """Return a box widened, on its open sides, by the tissue that goes on."""
-        margin = np.full(3, _MARGIN_RADII * radius_um)
-        margin[:2][np.array(self._volume.wrap_um) > 0] = 0.0
-        return box[0] - margin, box[1] + margin
-
     def fill(
-        self, slab: Slab, wanted: int, radius_um: float, seed: int, stage: str
-    ) -> np.ndarray:
-        """Take places for `wanted` somata in a slab.
+        self,
+        slabs: Sequence[Slab],
+        wanted: Sequence[int],
+        radius_um: float,
+        seed: int,
+        stages: Sequence[str],
+    ) -> list[np.ndarray]:
+        """Take places for somata of one radius in several slabs.
 
-        Proposal i depends on the seed, the stage's name and i alone. Returns the
-        centres, shape (n, 3), in the order in which they were taken; n is less than
-        wanted when no place was found for the rest.
+        Proposal i of a slab depends on the seed, the slab's stage name and i alone.
+        The slabs are filled in turns, a share at a time, so that neither side of a
+        border is full before the other.
+
+        Returns
+        -------
+        list of float64 (n, 3)
+            Centres in each slab, in the order in which they were taken; n is less than
+            wanted when no place was found for the rest.
         """
-        box = self._volume.slab_box_um(slab.z_low_um, slab.z_high_um)
-        low, high = self._beyond(box, radius_um)
-        per_cell = float(np.prod(high - low)) / slab.volume_um3
-        most = int(_MOST_TRIES * per_cell * wanted)
-        begin, tried, found = self._places_n, 0, []
-        while wanted and tried < most:
-            at_once = int(np.clip(2 * per_cell * wanted, _LEAST_AT_ONCE, _MOST_AT_ONCE))
-            draws = uniforms(seed, stage, np.arange(tried, tried + at_once))
-            points = low + draws[:, :3] * (high - low)
-            is_cell = slab.contains(points)
-            tried += at_once
-            chosen = self._take(points, is_cell, radius_um, wanted)
-            found.append(points[chosen[is_cell[chosen]]])
-            wanted -= len(found[-1])
-        self._give_up(begin, slab)
-        return np.concatenate(found) if found else np.zeros((0, 3))
+        margin = _MARGIN_RADII * radius_um
+        fillings = [
+            _Filling(slab, count, seed, stage, *slab.widened_box_um(margin))
+            for slab, count, stage in zip(slabs, wanted, stages, strict=True)
+        ]
+        for turn in range(1, _TURNS + 1):
+            for filling in fillings:
+                self._fill_up_to(filling.wanted * turn // _TURNS, filling, radius_um)
+        return [np.concatenate(one.centers or [np.zeros((0, 3))]) for one in fillings]
 
-    def _take(self, points, is_cell, radius_um, wanted) -> np.ndarray:
-        """Take what is free among proposals; returns those taken, in order."""
-        self._make_room(len(points))
-        chosen = np.zeros(len(points), np.int64)
-        _, taken_n, _ = kernels.take_places(
-            points,
-            is_cell,
-            float(radius_um),
-            wanted,
-            self._places_n,
-            self._grid,
-            self._places,
-            chosen,
-        )
-        self._places_n += taken_n
-        return chosen[:taken_n]
+    def _fill_up_to(self, goal: int, filling: _Filling, radius_um: float) -> None:
+        most = _MOST_TRIES * filling.boxes_n * filling.wanted
+        while (more := goal - filling.found) > 0 and filling.tried < most:
+            points = filling.propose(more)
+            is_cell = filling.slab.contains(points)
+            self._make_room(len(points))
+            chosen = np.zeros(len(points), np.int64)
+            seen, taken_n = kernels.take_places(
+                points,
+                is_cell,
+                float(radius_um),
+                more,
+                self._places_n,
+                self._grid,
+                self._places,
+                chosen,
+            )
+            chosen = chosen[:taken_n]
+            filling.centers.append(points[chosen[is_cell[chosen]]])
+            filling.found += len(filling.centers[-1])
+            filling.tried += seen
+            self._places_n += taken_n
 
     def _make_room(self, more: int) -> None:
         need = self._places_n + more
@@ -144,16 +181,6 @@ class Packing:
                     for part in self._places
                 )
             )
-
-    def _give_up(self, begin: int, slab: Slab) -> None:
-        """Free the places of this filling that other layers will fill themselves."""
-        new = slice(begin, self._places_n)
-        center, radius, _ = self._places
-        stays = center[new][slab.keeps(center[new])]
-        self._places_n = begin + len(stays)
-        center[begin : self._places_n] = stays
-        radius[begin : self._places_n] = radius[begin : begin + 1]
-        kernels.link_all(self._places_n, self._grid, self._places)
 
 
 def _make_grid(low, high, spacing_um: float, wrap_um) -> kernels.Grid:
