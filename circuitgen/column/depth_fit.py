@@ -67,26 +67,42 @@ def profile_of(arbor: Arbor) -> Profile:
     )
 
 
+def _tops_um(profiles: Sequence[Profile]) -> np.ndarray:
+    return np.array([one.apical_top_um for one in profiles])
+
+
+def has_tuft(
+    profiles: Sequence[Profile], layer_top_depth_um: float, first_layer_um: float
+) -> bool:
+    """Tell whether a type's apical dendrites are meant to end in the first layer.
+
+    They are if the middle one of them, with its soma at the top of its layer, would
+    get there.
+    """
+    tops = _tops_um(profiles)
+    tops = tops[~np.isnan(tops)]
+    return bool(tops.size) and np.median(tops) >= layer_top_depth_um - first_layer_um
+
+
 def _fitting(
-    profiles: Sequence[Profile],
-    z_um: np.ndarray,
-    thickness_um: float,
-    first_layer_um: float,
+    profiles: Sequence[Profile], z_um: np.ndarray, thickness_um: float
 ) -> np.ndarray:
-    """Tell which profiles fit which soma, shape (somata, profiles)."""
+    """Tell which profiles leave little cable outside, shape (somata, profiles)."""
     outside = np.column_stack(
         [sum(one.outside_um(z_um, thickness_um)) for one in profiles]
     )
     cable = np.array([one.cable_um for one in profiles])
     share = outside / np.where(cable > 0, cable, 1.0)
-    fits = share <= share.min(axis=1, keepdims=True) + TOLERATED_SHARE
-    tops = np.array([one.apical_top_um for one in profiles])
-    # How deep the apical top lies below the pia; comparisons with NaN are False.
-    drop = thickness_um - (z_um[:, None] + tops)
-    reaches = fits & (drop >= 0) & (drop <= first_layer_um)
-    least = np.where(reaches, drop, np.inf).min(axis=1, keepdims=True)
-    reaches &= drop <= least + TOLERATED_DROP_UM
-    return np.where(reaches.any(axis=1, keepdims=True), reaches, fits)
+    return share <= share.min(axis=1, keepdims=True) + TOLERATED_SHARE
+
+
+def _highest(fits: np.ndarray, drop_um: np.ndarray) -> np.ndarray:
+    """Narrow a choice to apical tops just below the pia, where there are any."""
+    # Comparisons with NaN, no apical dendrite, are False.
+    below = fits & (drop_um >= 0)
+    least = np.where(below, drop_um, np.inf).min(axis=1, keepdims=True)
+    near = below & (drop_um <= least + TOLERATED_DROP_UM)
+    return np.where(near.any(axis=1, keepdims=True), near, fits)
 
 
 def choose_profiles(
@@ -95,14 +111,15 @@ def choose_profiles(
     draws: np.ndarray,
     *,
     thickness_um: float,
-    first_layer_um: float,
+    is_tufted: bool,
 ) -> np.ndarray:
     """Choose a reconstruction of one cell type for every soma.
 
-    First those fit whose share of cable outside the cortex is within
-    `TOLERATED_SHARE` of the least. If the apical dendrite of some of them ends within
-    the first layer, an apical tuft belongs there: only these fit, and of them those
-    within `TOLERATED_DROP_UM` of the highest. Each that fits is equally likely.
+    Those fit whose share of cable outside the cortex is within `TOLERATED_SHARE` of
+    the least. For a type with a tuft in the first layer only those of them fit whose
+    apical top lies below the pia, within `TOLERATED_DROP_UM` of the highest such top:
+    a trunk too short for the depth would leave the tuft too deep. Each that fits is
+    equally likely.
 
     Parameters
     ----------
@@ -110,14 +127,18 @@ def choose_profiles(
         The type's reconstructions.
     z_um, draws : (n,)
         Height of every soma, and its uniform draw in [0, 1).
-    thickness_um, first_layer_um : float
-        Thickness of the cortex and of its first layer.
+    thickness_um : float
+        Thickness of the cortex.
+    is_tufted : bool
+        From `has_tuft`.
 
     Returns
     -------
     ndarray of int64, shape (n,)
     """
-    fits = _fitting(profiles, z_um, thickness_um, first_layer_um)
+    fits = _fitting(profiles, z_um, thickness_um)
+    if is_tufted:
+        fits = _highest(fits, thickness_um - (z_um[:, None] + _tops_um(profiles)))
     fitting_n = fits.sum(axis=1)
     wanted = np.minimum((draws * fitting_n).astype(np.int64), fitting_n - 1)
     rank = np.cumsum(fits, axis=1) - 1

@@ -123,18 +123,18 @@ def _refuse(file: Path, rule: str) -> None:
 def _load(file: Path) -> trimesh.Trimesh:
     """Read the triangles of a file, with doubled corners joined."""
     try:
-        mesh = trimesh.load_scene(str(file), skip_materials=True).to_mesh()
-        # Only places matter: corners that differ in colour or texture are one corner.
-        mesh = trimesh.Trimesh(mesh.vertices, mesh.faces, process=True)
+        scene = trimesh.load_scene(str(file), skip_materials=True, process=False)
+        mesh = scene.to_mesh()
     except OSError as error:
         _refuse(file, f"cannot be read: {error.strerror or error}")
-    except Exception as error:  # noqa: BLE001 - readers of broken files raise anything
+    except Exception as error:  # readers of broken files raise anything
         _refuse(file, f"cannot be read as a mesh ({error}); export it again")
     if not len(mesh.faces):
         _refuse(file, "holds no triangles; export the surface, not points or curves")
     if not np.isfinite(mesh.vertices).all():
         _refuse(file, "has corners that are not finite numbers; export it again")
-    return mesh
+    # Only places matter: corners that differ in colour or texture are one corner.
+    return trimesh.Trimesh(mesh.vertices, mesh.faces, process=True)
 
 
 def _check_closed(file: Path, mesh: trimesh.Trimesh) -> None:

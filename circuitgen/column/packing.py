@@ -22,7 +22,7 @@ from circuitgen.core.draws import uniforms
 # Zhang & Torquato 2013, Phys Rev E 88:053312 (recalled from memory).
 SATURATION = 0.38413
 # Proposals per wanted soma after which a layer counts as full.
-_MOST_TRIES = 4000
+_MOST_TRIES = 1000
 # How far the tissue goes on, in radii of the soma: its own edge is crowded.
 _MARGIN_RADII = 4.0
 # Turns in which the layers of a type are filled.
