@@ -28,7 +28,7 @@ from circuitgen.spec import Spec
 _UM3_PER_MM3 = 1e9
 _MOST_CELLS = 10**8
 # More of a type's cable than this outside the cortex is worth a word.
-_WORTH_WARNING = 0.05
+_WORTH_WARNING = 0.10
 
 
 @dataclass(frozen=True)
