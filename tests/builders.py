@@ -33,8 +33,11 @@ def arbor_from_segments(start, end, kind, radius=0.3, initial=None, name="made")
         path_end_um=bounds[1:].copy(),
         cable_start_um=bounds[:-1].copy(),
         cable_end_um=bounds[1:].copy(),
-        sample_id=np.arange(1, kind.size + 1),
-        sample_cable_um=bounds,
+        first_piece=np.arange(kind.size),
+        last_piece=np.arange(kind.size),
+        piece_number=np.arange(1, kind.size + 1),
+        piece_backward=np.zeros(len(kind), bool),
+        piece_bounds_um=bounds,
     )
 
 

@@ -43,12 +43,17 @@ class Arbor:
     path_end_um : float64 (n,)
         The same to `end`.
     cable_start_um, cable_end_um : float64 (n,)
-        Where the segment begins and ends on the cable coordinate of the file, in
-        which the file's own sample-to-sample pieces lie one after another.
-    sample_id : int64 (m,)
-        SWC number of the sample that ends each piece of the file.
-    sample_cable_um : float64 (m + 1,)
-        Cable coordinate of the piece boundaries, increasing from 0.
+        Where the segment begins and ends on the cable coordinate, in which segments
+        and the file's own sample-to-sample pieces lie one after another.
+    first_piece, last_piece : int32 (n,)
+        First and last piece of the file that the segment stands for.
+    piece_number : int64 (m,)
+        SWC number of the sample that ends each piece.
+    piece_backward : bool (m,)
+        True where the file runs the piece toward the soma.
+    piece_bounds_um : float64 (m + 1,)
+        Cable coordinate of the piece boundaries, never decreasing, from 0: where the
+        samples stand beside the segments.
     """
 
     name: str
@@ -63,8 +68,11 @@ class Arbor:
     path_end_um: np.ndarray
     cable_start_um: np.ndarray
     cable_end_um: np.ndarray
-    sample_id: np.ndarray
-    sample_cable_um: np.ndarray
+    first_piece: np.ndarray
+    last_piece: np.ndarray
+    piece_number: np.ndarray
+    piece_backward: np.ndarray
+    piece_bounds_um: np.ndarray
 
     def __post_init__(self):
         for field in fields(self):
@@ -101,18 +109,17 @@ class Arbor:
 
         Returns
         -------
-        sample_id : int64 (k,)
+        number : int64 (k,)
             SWC number of the sample that ends the piece.
-        sample_fraction : float64 (k,)
+        fraction : float64 (k,)
             0 at that sample's parent, 1 at the sample.
         """
         begin, end = self.cable_start_um[segment], self.cable_end_um[segment]
         cable = begin + fraction * (end - begin)
-        bounds = self.sample_cable_um
+        bounds = self.piece_bounds_um
         piece = np.searchsorted(bounds, cable, side="left") - 1
-        # A place on a boundary between branches belongs to its own segment's side.
-        piece = np.clip(piece, np.searchsorted(bounds, begin, side="right") - 1, None)
-        piece = np.clip(piece, 0, self.sample_id.size - 1)
+        piece = np.clip(piece, self.first_piece[segment], self.last_piece[segment])
         length = bounds[piece + 1] - bounds[piece]
         inside = (cable - bounds[piece]) / np.where(length > 0, length, 1.0)
-        return self.sample_id[piece], np.clip(inside, 0.0, 1.0)
+        inside = np.where(self.piece_backward[piece], 1.0 - inside, inside)
+        return self.piece_number[piece], np.clip(inside, 0.0, 1.0)
