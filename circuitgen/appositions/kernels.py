@@ -262,11 +262,10 @@ def _collect(axons, layer, placed, rules, own, cell, pre, group, work, hits, n):
 
 
 @kernel
-def _list_groups(axons, placed, pre_cells, grid):
-    """List the axon groups of some cells in order of place, tile by tile.
+def list_groups(axons, placed, pre_cells, grid):
+    """List the axon groups of some cells: tile of its place, cell, and group of each.
 
-    Neighbours in the list look at the same targets, which so stay in the processor's
-    cache. Returns the cell (counting within pre_cells) and the group of every entry.
+    Tiles are single numbers; cells count within `pre_cells`.
     """
     total = 0
     for cell in pre_cells:
@@ -290,8 +289,7 @@ def _list_groups(axons, placed, pre_cells, grid):
                 key[n] = key[n] * 4096 + np.int64(step)
             pre[n], group[n] = index, item
             n += 1
-    order = np.argsort(key)
-    return pre[order], group[order]
+    return key, pre, group
 
 
 @kernel
@@ -362,40 +360,28 @@ def _new_work(layers):
 
 
 @kernel
-def _all_hits(axons, layers, placed, rules, cells, pre_cells):
-    """Collect the hits of all axons of a task, in order of place."""
+def _all_hits(axons, layers, placed, rules, pre_cells, own, pre, group):
+    """Collect the hits of the listed groups of axons."""
     work, hits, n = _new_work(layers), _new_hits(4096), 0
-    own = np.searchsorted(cells, pre_cells)
-    for i in range(own.size):
-        if own[i] == cells.size or cells[own[i]] != pre_cells[i]:
-            own[i] = -1
-    pre, group = _list_groups(axons, placed, pre_cells, layers[0].grid)
     for i in range(pre.size):
+        cell, here = pre_cells[pre[i]], own[pre[i]]
         for layer in layers:
             hits, n = _collect(
-                axons,
-                layer,
-                placed,
-                rules,
-                own[pre[i]],
-                pre_cells[pre[i]],
-                pre[i],
-                group[i],
-                work,
-                hits,
-                n,
+                axons, layer, placed, rules, here, cell, pre[i], group[i], work, hits, n
             )
     return hits, n
 
 
 @kernel
-def search(axons, layers, placed, rules, cells, pre_cells):
+def search(axons, layers, placed, rules, cells, pre_cells, own, pre_of, group_of):
     """Find the appositions of the axons of `pre_cells` on the targets of `cells`.
 
-    `layers` is a tuple of Layer made for `cells`. Returns Pairs (by presynaptic cell
-    in the order given, then in the order of `cells`) and their Sites.
+    `layers` is a tuple of Layer made for `cells`; `own` gives each presynaptic cell's
+    place in `cells`, -1 if absent; `pre_of` and `group_of` list the groups of their
+    axons in any order. Returns Pairs (by presynaptic cell in the order given, then in
+    the order of `cells`) and their Sites.
     """
-    hits, n = _all_hits(axons, layers, placed, rules, cells, pre_cells)
+    hits, n = _all_hits(axons, layers, placed, rules, pre_cells, own, pre_of, group_of)
     spots = _axon_places(axons, hits, n)
     by_pre, pre_first = np.zeros(n, np.int64), np.zeros(pre_cells.size + 1, np.int64)
     sorted_by(hits.pre, np.arange(n), pre_first, by_pre)
