@@ -325,3 +325,20 @@ def test_rows_kept_for_the_audit_change_no_law():
 )
 def test_without_a_usable_row_there_is_no_fit(windows):
     assert fit_pathways(SIGNS, windows) is None
+
+
+def test_what_the_fit_does_not_use_is_said():
+    window = _one(
+        1,
+        NEAR,
+        tested_n=60,
+        connected_n=9,
+        slice_thickness_um=300,
+        soma_depth_low_um=40,
+        soma_depth_high_um=90,
+        reciprocal_tested_n=20,
+        reciprocal_connected_n=5,
+    )
+    [row] = fit_pathways(SIGNS, [window]).rows
+    assert "slice not used yet" in row.note
+    assert "reciprocal counts not used yet" in row.note

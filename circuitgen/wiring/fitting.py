@@ -291,6 +291,16 @@ def _collect(types_n: int, units, windows, classes) -> WiringFit:
     return WiringFit(laws, low, high, recorded, rows)
 
 
+def _unused(recording: Recording) -> list[str]:
+    """Say which measurements of a row the fit does not use yet."""
+    notes = []
+    if recording.slice_thickness_um is not None:
+        notes.append("slice not used yet: fitted as if nothing were cut")
+    if recording.reciprocal_tested_n is not None:
+        notes.append("reciprocal counts not used yet")
+    return notes
+
+
 def _row_fit(window: Window, units: Sequence[_Unit], laws) -> RowFit:
     """Pool the laws of a row's pathways over its window."""
     total, p, first, second = 0.0, 0.0, 0.0, 0.0
@@ -305,12 +315,13 @@ def _row_fit(window: Window, units: Sequence[_Unit], laws) -> RowFit:
     sampled = {p for p, histogram in window.histograms.items() if histogram.sum()}
     mine = [u for u in units if window in u.windows]
     notes = list(dict.fromkeys(note for unit in mine for note in unit.notes))
+    notes += _unused(window.recording)
     if not total:
         return RowFit(
             window, Moments(np.nan, np.nan, np.nan), False, "no pair in window"
         )
     if window.recording.use == "audit":
-        notes = ["kept out of the fit"]
+        notes = ["kept out of the fit", *_unused(window.recording)]
     elif window.recording.measured_probability is None:
         notes.append("no probability measured: not used in the fit")
     elif sampled - {p for u in mine for p in u.pathways}:
