@@ -74,6 +74,24 @@ def test_every_unreadable_reconstruction_is_named(tmp_path):
     assert "bad_two.swc:1" in err
 
 
+def test_repairs_are_reported(tmp_path):
+    spec = write_spec(tmp_path)
+    source = ROOT / "morphologies" / "L4_stellate_1.swc"
+    lines = source.read_text().splitlines()
+    words = lines[-1].split()
+    words[5] = "0"
+    (tmp_path / "mended.swc").write_text("\n".join([*lines[:-1], " ".join(words)]))
+    text = spec.read_text()
+    wanted = [line for line in text.splitlines() if "L4_stellate" in line][0]
+    spec.write_text(text.replace(wanted, "    morphologies: mended.swc"))
+    code, _, err = run_command("build", spec, "--out", tmp_path / "run")
+    assert code == 0, err
+    assert "1 repairs to reconstructions" in err
+    stored = json.loads((tmp_path / "run" / "provenance.json").read_text())
+    [repair] = stored["summary"]["repairs"]
+    assert repair.startswith("mended.swc: radii of zero or less")
+
+
 def test_json_alone_on_standard_output(tmp_path):
     spec = write_spec(tmp_path)
     code, out, err = run_command("build", spec, "--out", tmp_path / "run", "--json")

@@ -97,6 +97,7 @@ def _summarise(circuit: Circuit, histograms, realised, edges_n, fit_columns):
         "recordings_with_counts": counted,
         "recordings_infeasible": sum(not ok for ok in fit_columns["feasible"]),
         "warnings": list(circuit.warnings),
+        "repairs": list(circuit.repairs),
     }
 
 
@@ -107,6 +108,8 @@ def _write_all(spec: Spec, folder: RunFolder, threads: int, watch: Stopwatch) ->
         write_cells(circuit, folder.unfinished / "cells.parquet")
     for warning in circuit.warnings:
         _say(f"warning: {warning}")
+    if circuit.repairs:
+        _say(f"{len(circuit.repairs)} repairs to reconstructions: see provenance.json")
     store = SiteStore(circuit, folder.work)
     with watch.stage("appositions"):
         store.find_all(threads)

@@ -26,6 +26,7 @@ class Circuit:
     placement: Placement
     scene: Scene
     warnings: tuple[str, ...]
+    repairs: tuple[str, ...]
 
     @property
     def cells(self) -> Cells:
@@ -43,13 +44,15 @@ class Circuit:
         return types[pre].astype(np.int64) * len(self.spec.cell_types) + types[post]
 
 
-def read_arbors(spec: Spec) -> tuple[list[list[Arbor]], list[str]]:
-    """Read all reconstructions of a spec; return arbors by type, and warnings.
+def read_arbors(spec: Spec) -> tuple[list[list[Arbor]], dict[str, list[str]]]:
+    """Read all reconstructions of a spec; return arbors by type, and findings.
 
-    Raises one InputError with the problems of all files.
+    Findings are texts by severity, ``warning`` and ``repair``. Raises one InputError
+    with the problems of all files.
     """
     files_n = sum(len(cell_type.morphologies) for cell_type in spec.cell_types)
-    arbors, warnings, problems = [], [], []
+    arbors, problems = [], []
+    findings: dict[str, list[str]] = {"warning": [], "repair": []}
     with Progress("reading reconstructions", files_n) as progress:
         for cell_type in spec.cell_types:
             own = []
@@ -61,11 +64,9 @@ def read_arbors(spec: Spec) -> tuple[list[list[Arbor]], list[str]]:
                     continue
                 finally:
                     progress.advance()
-                warnings += [
-                    f"{path.name}: {finding.text}"
-                    for finding in reconstruction.findings
-                    if finding.severity == "warning"
-                ]
+                for finding in reconstruction.findings:
+                    text = f"{path.name}: {finding.text} ({finding.count})"
+                    findings[finding.severity].append(text)
                 own.append(
                     build_arbor(
                         reconstruction,
@@ -77,7 +78,7 @@ def read_arbors(spec: Spec) -> tuple[list[list[Arbor]], list[str]]:
             arbors.append(own)
     if problems:
         raise InputError(problems)
-    return arbors, warnings
+    return arbors, findings
 
 
 def _target_masks(spec: Spec) -> np.ndarray:
@@ -89,7 +90,7 @@ def _target_masks(spec: Spec) -> np.ndarray:
 
 def assemble(spec: Spec) -> Circuit:
     """Read the reconstructions, place the cells, and make them ready for the search."""
-    by_type, warnings = read_arbors(spec)
+    by_type, findings = read_arbors(spec)
     placement = place_cells(spec, by_type)
     arbors = [arbor for own in by_type for arbor in own]
     cells = placement.cells
@@ -104,8 +105,9 @@ def assemble(spec: Spec) -> Circuit:
         autapses=spec.appositions.autapses,
         wrap_um=placement.volume.wrap_um,
     )
-    warnings += placement.warnings
-    return Circuit(spec, tuple(arbors), placement, scene, tuple(warnings))
+    warnings = (*findings["warning"], *placement.warnings)
+    repairs = tuple(findings["repair"])
+    return Circuit(spec, tuple(arbors), placement, scene, warnings, repairs)
 
 
 def cells_table(circuit: Circuit) -> dict[str, object]:
