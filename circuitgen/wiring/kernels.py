@@ -1,25 +1,10 @@
-"""Compiled loops over pairs: tables looked up, connections and counts drawn."""
+"""Compiled loops over pairs: connections, counts and sites drawn."""
 
 from __future__ import annotations
 
 import numpy as np
 
 from circuitgen.core.compilation import kernel
-
-
-@kernel
-def largest_by_group(group, value, largest):
-    """Raise `largest` of every group to the largest value of its rows."""
-    for row in range(group.size):
-        if value[row] > largest[group[row]]:
-            largest[group[row]] = value[row]
-
-
-@kernel
-def look_up(first, pathway, a, table, out):
-    """Copy the entry of every pair from a table of runs, one run for a pathway."""
-    for row in range(a.size):
-        out[row] = table[first[pathway[row]] + a[row]]
 
 
 @kernel
