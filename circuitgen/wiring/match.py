@@ -253,31 +253,40 @@ class _Targets:
     def __init__(self, histogram: Histogram):
         self.histogram = histogram
         self.notes: list[str] = []
-        self.feasible = True
 
-    def _inside(self, name, value, low, high, what: str) -> float:
+    def _inside(self, name: str, value, low, high, given: str) -> float:
         slack = _ROUNDING * max(high, 1.0)
-        if low - slack <= value <= high + slack:
-            return min(max(value, low), high)
-        self.feasible = False
-        taken = "highest" if value > high else "lowest"
-        self.notes.append(
-            f"{name} {value:.6g} cannot be met: {what} lies between {low:.4g} and "
-            f"{high:.4g}; the law gives the {taken}"
-        )
-        return high if value > high else low
+        if not low - slack <= value <= high + slack:
+            self.notes.append(
+                f"{name} {value:.4g} cannot be met: {given} it lies between "
+                f"{low:.4g} and {high:.4g}"
+            )
+        return float(min(max(value, low), high))
 
     def probability(self, value: float) -> float:
-        what = "with appositions on so few pairs it"
-        return self._inside("probability", value, 0.0, self.histogram.touching, what)
+        given = "since the other pairs have no apposition"
+        return self._inside("probability", value, 0.0, self.histogram.touching, given)
 
     def mean(self, value: float, high: float) -> float:
-        what = "with these appositions and this probability it"
-        return self._inside("synapses_mean", value, 1.0, high, what)
+        given = "with these appositions and this probability"
+        return self._inside("synapses_mean", value, 1.0, high, given)
 
     def spread(self, value: float, low: float, high: float) -> float:
-        what = "with these appositions, this probability and this mean it"
-        return self._inside("synapses_sd", value, low, high, what)
+        given = "with these appositions, this probability and this mean"
+        return self._inside("synapses_sd", value, low, high, given)
+
+
+def infeasible_targets(
+    histogram: Histogram, probability, synapses_mean=None, synapses_sd=None
+) -> list[str]:
+    """Return what a histogram cannot give and its range, in words; empty if all."""
+    targets = _Targets(histogram)
+    p = targets.probability(probability)
+    if synapses_mean is not None and histogram.a.size:
+        mean = targets.mean(synapses_mean, mean_high(histogram, p))
+        if synapses_sd is not None:
+            targets.spread(synapses_sd, *spread_range(histogram, p, mean))
+    return targets.notes
 
 
 def match(
@@ -333,7 +342,7 @@ def _match_synapses(family, targets, mean, spread, t1) -> Match:
     mean = targets.mean(float(mean), highest)
     limits = spread_range(histogram, p, mean)
     ranges = Ranges(histogram.touching, highest, *limits)
-    t2 = 0.0
+    t2, humps = 0.0, ""
     if highest - 1 > _ROUNDING:
         t1 = family.find_t1(mean, highest, 0.0, t1)
     if spread is not None:
@@ -341,21 +350,27 @@ def _match_synapses(family, targets, mean, spread, t1) -> Match:
         if limits[1] - limits[0] > _SPREAD_ROUNDING:
             plain = family.at(t1, 0.0)[1].synapses_sd
             t1, t2 = family.find_t2(mean, highest, spread, limits, t1)
-            if t2 > 0:
-                targets.notes.append(
-                    f"synapses_sd {spread:.4g} exceeds the {plain:.4g} of the law of "
-                    "this probability and mean: met by a law of two humps, that "
-                    "favours few and many synapses over the numbers between"
-                )
+            humps = _two_humps(spread, plain) if t2 > 0 else ""
     t0, now = family.at(t1, t2)
-    return _report((t0, t1, t2), _values(now), targets, ranges)
+    return _report((t0, t1, t2), _values(now), targets, ranges, humps)
+
+
+def _two_humps(spread: float, plain: float) -> str:
+    return (
+        f"synapses_sd {spread:.4g} exceeds the {plain:.4g} of the law of this "
+        "probability and mean: met by a law of two humps, that favours few and many "
+        "synapses over the numbers between"
+    )
 
 
 def _values(now: Moments) -> tuple[float, float, float]:
     return now.probability, now.synapses_mean, now.synapses_sd
 
 
-def _report(law, values, targets: _Targets, ranges: Ranges) -> Match:
-    note = "; ".join(targets.notes)
+def _report(law, values, targets: _Targets, ranges: Ranges, humps: str = "") -> Match:
+    notes, feasible = list(targets.notes), not targets.notes
+    if not feasible:
+        notes.append("the nearest law is used")
+    note = "; ".join([*notes, humps] if humps else notes)
     numbers = (float(number) for number in (*law, *values))
-    return Match(*numbers, feasible=targets.feasible, note=note, ranges=ranges)
+    return Match(*numbers, feasible=feasible, note=note, ranges=ranges)
