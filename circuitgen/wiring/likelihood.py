@@ -17,8 +17,10 @@ from circuitgen.wiring.law import Histogram, Moments, moments, ways
 
 REFERENCE_APPOSITIONS = 5
 # Farther out nothing changes that a recording could tell.
-_BOUNDS = np.array([25.0, 60.0])
-_LONGEST_STEP = 2.0
+_BOUNDS = np.array([300.0, 60.0])
+_LONGEST_STEP = 4.0
+# A step that gains less log-likelihood than this is the last.
+_LEAST_GAIN = 1e-20
 _MOST_STEPS = 200
 _MOST_SPREAD = 2.0
 
@@ -117,17 +119,23 @@ def fit_jointly(
     place = np.array([-1.0 if eta is None else eta, -1.0 if t1 is None else t1])
     for _ in range(_MOST_STEPS):
         value, slope, curvature = _total(data, place, t2, with_score=True)
-        step = _scoring_step(slope, curvature, free)
-        size = 1.0
-        while True:
-            new = np.where(free, np.clip(place + size * step, -_BOUNDS, _BOUNDS), place)
-            if _total(data, new, t2, with_score=False) >= value or size < 1e-12:
-                break
+        # At a bound only the way back is open.
+        open_way = free & ~((np.abs(place) >= _BOUNDS) & (slope * place > 0))
+        step = _scoring_step(slope, curvature, open_way)
+        # At the top the likelihood is flat: steps there pass on their slope alone.
+        least = value - 1e-12 * max(abs(value), 1.0)
+        size, new = 1.0, _moved(place, step)
+        while _total(data, new, t2, with_score=False) < least and size > 1e-6:
             size /= 2
-        moved, place = np.abs(new - place).max(), new
-        if moved < 1e-13 or size < 1e-12:
+            new = _moved(place, size * step)
+        place = new
+        if slope @ step < _LEAST_GAIN or size < 1e-6:
             break
     return float(place[0] - reference_odds(place[1], t2)[0]), float(place[1])
+
+
+def _moved(place, step) -> np.ndarray:
+    return np.clip(place + step, -_BOUNDS, _BOUNDS)
 
 
 def _scoring_step(slope, curvature, free) -> np.ndarray:
