@@ -26,7 +26,7 @@ def test_a_stand_in_needs_no_repair_and_no_warning(path):
     place = {int(n): i for i, n in enumerate(table[:, 0])}
     above = [place.get(int(n), i) for i, n in enumerate(table[:, 6])]
     steps = table[:, 2:5] - table[above, 2:5]
-    assert r.file_cable_um == pytest.approx(np.linalg.norm(steps, axis=1).sum())
+    assert r.cable_length_um == pytest.approx(np.linalg.norm(steps, axis=1).sum())
 
 
 @pytest.mark.parametrize("path", FILES, ids=lambda path: path.stem)
@@ -48,9 +48,9 @@ def test_an_arbor_has_the_cable_of_its_file_but_for_the_soma(path):
     neurite = arbor.kind != Kind.SOMA
     r = read_reconstruction(path)
     stems = (arbor.parent[neurite] == -1).sum()
-    inside = r.soma.radius_um[0] * stems
+    inside = arbor.soma_radius_um * stems
     path_um = (arbor.path_end_um - arbor.path_um)[neurite].sum()
     # Two decimals put a stem's first sample up to 0.005 sqrt(3) um off the surface.
     off_um = 0.005 * np.sqrt(3) * stems
-    assert path_um == pytest.approx(r.file_cable_um - inside, abs=off_um)
+    assert path_um == pytest.approx(r.cable_length_um - inside, abs=off_um)
     assert 0.98 * path_um < arbor.length_um[neurite].sum() <= path_um + 1e-6

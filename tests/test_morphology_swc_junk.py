@@ -40,10 +40,11 @@ def check_read_or_refused(tmp_path_factory, content):
         return
     assert np.isfinite(r.position_um).all()
     assert (r.radius_um > 0).all()
-    assert np.isin(r.kind, [2, 3, 4]).all()
+    assert np.isin(r.kind, [1, 2, 3, 4]).all()
+    assert (r.kind == 1).any()
+    assert ((r.parent >= 0) | (r.kind == 1)).all()
     assert (r.parent < np.arange(r.parent.size)).all()
-    assert (r.soma.radius_um > 0).all()
-    if r.file_cable_um < 1e4:
+    if r.cable_length_um < 1e4:
         arbor = build_arbor(r, upright="y", min_spacing_um=4.0, ais_um=40.0)
         assert np.isfinite(arbor.start_um).all()
         assert np.isfinite(arbor.end_um).all()

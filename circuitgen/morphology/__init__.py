@@ -3,12 +3,10 @@
 from circuitgen.morphology.arbor import Arbor, Kind
 from circuitgen.morphology.build import build_arbor
 from circuitgen.morphology.describe import read_description
+from circuitgen.morphology.findings import Finding
 from circuitgen.morphology.growth import grow, grow_files
-from circuitgen.morphology.reconstruction import (
-    Finding,
-    Reconstruction,
-    read_reconstruction,
-)
+from circuitgen.morphology.reconstruction import Reconstruction, read_reconstruction
+from circuitgen.morphology.swc import write_swc
 
 __all__ = [
     "Arbor",
@@ -20,4 +18,5 @@ __all__ = [
     "grow_files",
     "read_description",
     "read_reconstruction",
+    "write_swc",
 ]

@@ -120,6 +120,8 @@ class Arbor:
         piece = np.searchsorted(bounds, cable, side="left") - 1
         piece = np.clip(piece, self.first_piece[segment], self.last_piece[segment])
         length = bounds[piece + 1] - bounds[piece]
-        inside = (cable - bounds[piece]) / np.where(length > 0, length, 1.0)
+        # A piece of no length is its sample.
+        inside = np.ones(length.shape)
+        np.divide(cable - bounds[piece], length, out=inside, where=length > 0)
         inside = np.where(self.piece_backward[piece], 1.0 - inside, inside)
         return self.piece_number[piece], np.clip(inside, 0.0, 1.0)
