@@ -43,8 +43,8 @@ def mend_radii(samples: Samples, findings: Findings) -> Samples:
     bad = neurite & (radius <= 0)
     if not bad.any():
         return samples
-    text = "{n} with a radius of zero or less take their nearest ancestor's, else a "
-    text += f"descendant's, else {LEAST_RADIUS_UM:g} um; gaps there are nominal"
+    text = "radii of zero or less take their nearest ancestor's, else a descendant's, "
+    text += f"else {LEAST_RADIUS_UM:g} um, in {{n}}; gaps there are nominal"
     findings.repair("radius_inherited", text, samples.line[bad])
     begins = (parent < 0) | ~neurite[parent] | ~neurite
     _inherit(radius, parent, begins)
