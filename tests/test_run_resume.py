@@ -99,7 +99,9 @@ def test_two_builds_at_once(tmp_path):
     while not (tmp_path / "run.unfinished" / "fingerprint.json").exists():
         assert first.poll() is None
         time.sleep(0.02)
+    os.kill(first.pid, signal.SIGSTOP)  # or it may end before the second has begun
     code, _, err = run_command("build", spec, "--out", run)
+    os.kill(first.pid, signal.SIGCONT)
     assert code == 2
     assert "another process is building" in err
     _, err = first.communicate(timeout=300)

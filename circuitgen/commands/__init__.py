@@ -1,0 +1,7 @@
+"""The commands, one module each; every ``run_x`` imports what it needs when it runs."""
+
+from circuitgen.commands.build import add_build_command
+from circuitgen.commands.grow import add_grow_command
+from circuitgen.commands.new import add_new_command
+
+__all__ = ["add_build_command", "add_grow_command", "add_new_command"]
