@@ -7,7 +7,12 @@ import sys
 from collections.abc import Sequence
 
 from circuitgen import __version__
-from circuitgen.commands import add_build_command, add_grow_command, add_new_command
+from circuitgen.commands import (
+    add_build_command,
+    add_grow_command,
+    add_new_command,
+    add_predict_command,
+)
 from circuitgen.commands.arguments import BAD_INPUT, INTERRUPTED
 from circuitgen.core.errors import CircuitgenError
 
@@ -32,6 +37,7 @@ def make_parser() -> argparse.ArgumentParser:
     commands = parser.add_subparsers(title="commands", required=True, metavar="COMMAND")
     for add_command in (
         add_build_command,
+        add_predict_command,
         add_new_command,
         add_grow_command,
     ):

@@ -6,6 +6,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from oracles_slices import stays_inside
 
 from circuitgen.appositions import (
     Slice,
@@ -15,7 +16,6 @@ from circuitgen.appositions import (
     place_slices,
 )
 from circuitgen.morphology import build_arbor, read_reconstruction
-from oracles_slices import stays_inside
 
 CUT = Slice(thickness_um=300.0, soma_low_um=40.0, soma_high_um=90.0)
 DISTANCES_UM = np.array([0.0, 10.0, 49.0, 50.0, 70.0, 400.0])

@@ -20,13 +20,14 @@ ROOMS = {
     "column": {"core", "spec", "morphology"},
     "appositions": {"core", "spec", "morphology"},
     "wiring": {"core", "spec"},
-    "prediction": {"core", "spec", "wiring"},
+    "prediction": {"core", "spec", "column", "appositions", "wiring", "run"},
     "audit": {"core", "spec", "prediction"},
     "export": {"core", "spec"},
     "report": {"core", "spec"},
 }
 EVERY_ROOM = {*ROOMS, "run", "commands"}
-ROOMS["run"] = EVERY_ROOM - {"commands"}
+ROOMS["run"] = {"core", "spec", "morphology", "column", "appositions", "wiring"}
+ROOMS["run"] |= {"report"}
 ROOMS["commands"] = EVERY_ROOM
 # Modules that other rooms may import past the door.
 OPEN_MODULES = {"circuitgen.morphology.arbor", "circuitgen.commands.arguments"}

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import math
 import sys
 
 FINE, DISAGREES, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
@@ -23,6 +24,17 @@ def at_least_one(text: str) -> int:
 def not_negative(text: str) -> int:
     """Return a whole number from 0 up, or refuse the argument."""
     return _whole_number(text, 0)
+
+
+def number(text: str) -> float:
+    """Return a finite number, or refuse the argument."""
+    try:
+        value = float(text)
+    except ValueError:
+        value = math.nan
+    if not math.isfinite(value):
+        raise argparse.ArgumentTypeError(f"{text!r} must be a finite number")
+    return value
 
 
 def say(text: str) -> None:

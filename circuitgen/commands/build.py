@@ -8,6 +8,9 @@ from pathlib import Path
 
 from circuitgen.commands.arguments import FINE, at_least_one, say
 
+# As many as the wiring room keeps (a test compares): importing it here is slow.
+_DRAWS_N = 400
+
 
 def run_build(arguments: argparse.Namespace) -> int:
     """Build a circuit and print what came out."""
@@ -18,6 +21,7 @@ def run_build(arguments: argparse.Namespace) -> int:
         arguments.out,
         force=arguments.force,
         threads=arguments.threads,
+        draw=arguments.draw,
     )
     if arguments.json:
         say(json.dumps({"folder": str(outcome.folder), **outcome.summary}))
@@ -48,6 +52,13 @@ def _summary_text(summary: dict[str, object]) -> str:
     return "\n".join(f"{name:<22}{value:>16}" for name, value in rows)
 
 
+def _draw_number(text: str) -> int:
+    value = at_least_one(text)
+    if value > _DRAWS_N:
+        raise argparse.ArgumentTypeError(f"{text!r} must be 1 to {_DRAWS_N}")
+    return value
+
+
 def add_build_command(commands) -> None:
     """Declare ``circuitgen build``."""
     parser = commands.add_parser("build", help="build a wired circuit from a spec file")
@@ -60,6 +71,12 @@ def add_build_command(commands) -> None:
     )
     parser.add_argument(
         "--threads", type=at_least_one, metavar="N", help="default: all cores"
+    )
+    parser.add_argument(
+        "--draw",
+        type=_draw_number,
+        metavar="K",
+        help=f"draw with the K-th posterior draw of the laws, 1 to {_DRAWS_N}",
     )
     parser.add_argument("--json", action="store_true", help="print the summary as JSON")
     parser.set_defaults(run=run_build)

@@ -81,8 +81,8 @@ def read_arbors(spec: Spec) -> tuple[list[list[Arbor]], dict[str, list[str]]]:
     return arbors, findings
 
 
-def _target_masks(spec: Spec) -> np.ndarray:
-    """Bits of the targets that each type's axon may contact."""
+def target_masks(spec: Spec) -> np.ndarray:
+    """Return bits of the targets that each type's axon may contact."""
     return np.array(
         [sum(TARGET_BITS[t] for t in cell_type.targets) for cell_type in spec.cell_types]
     )
@@ -99,7 +99,7 @@ def assemble(spec: Spec) -> Circuit:
         arbor_index=cells.arbor_index,
         position_um=cells.position_um,
         azimuth_deg=cells.azimuth_deg,
-        target_mask=_target_masks(spec)[cells.type_index],
+        target_mask=target_masks(spec)[cells.type_index],
         max_gap_um=spec.appositions.max_gap_um,
         min_spacing_um=spec.appositions.min_spacing_um,
         autapses=spec.appositions.autapses,

@@ -26,9 +26,10 @@ def hash_inputs(spec: Spec) -> dict[str, str]:
     return {str(path): sha256_of(path) for path in spec.input_files}
 
 
-def fingerprint(spec: Spec, inputs: dict[str, str]) -> str:
-    """Return a hash of all that a run depends on: spec, inputs, versions."""
+def fingerprint(spec: Spec, inputs: dict[str, str], draw: int | None) -> str:
+    """Return a hash of all that a run depends on: spec, inputs, draw, versions."""
     digest = hashlib.sha256(spec.text.encode())
+    digest.update(f"draw {draw}".encode())
     digest.update(__version__.encode())
     for library in _LIBRARIES:
         digest.update(version(library).encode())
@@ -58,7 +59,12 @@ def peak_memory_gib() -> float:
 
 
 def write_provenance(
-    path: Path, spec: Spec, inputs: dict[str, str], stopwatch: Stopwatch, summary: dict
+    path: Path,
+    spec: Spec,
+    inputs: dict[str, str],
+    stopwatch: Stopwatch,
+    summary: dict,
+    mark: str,
 ) -> None:
     """Write provenance.json beside the tables that it hashes."""
     tables = sorted(
@@ -70,8 +76,9 @@ def write_provenance(
         hashes = {entry.name: sha256_of(entry) for entry in tables}
     content = {
         "circuitgen": __version__,
-        "fingerprint": fingerprint(spec, inputs),
+        "fingerprint": mark,
         "spec_name": spec.name,
+        "spec_path": str(spec.path),
         "seed": spec.seed,
         "spec_sha256": hashlib.sha256(spec.text.encode()).hexdigest(),
         "spec_text": spec.text,

@@ -1,27 +1,35 @@
-"""The two tables that tell what was fitted: by pathway and by recording."""
+"""The tables of what was fitted: by pathway, distance, recording and draw."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 
 import numpy as np
-from scipy.stats import norm
 
 from circuitgen.core.tables import names_column
 from circuitgen.run.circuit import Circuit
-from circuitgen.run.windows import REFERENCE_HIGH_UM, Histograms
+from circuitgen.run.distances import BIN_EDGES_UM, DistanceBins
+from circuitgen.run.protocol import REFERENCE_HIGH_UM
+from circuitgen.run.windows import Histograms
 from circuitgen.run.wire import Realised
 from circuitgen.wiring import (
-    Law,
+    INTERVAL,
+    Laws,
     RowFit,
     WiringFit,
     largest_probability,
-    moments,
+    show,
     wilson_interval,
 )
 
-_Z95 = float(norm.ppf(0.975))
 NAN = float("nan")
+_MIDDLE_HALF = (0.25, 0.75)
+
+
+def _quantiles(values: np.ndarray, points) -> list[float]:
+    """Quantiles of the draws that show something, NaN where none does."""
+    known = values[~np.isnan(values)]
+    return np.quantile(known, points).tolist() if known.size else [NAN] * len(points)
 
 
 def _own_window(fit: WiringFit, pathway):
@@ -37,107 +45,188 @@ def _own_window(fit: WiringFit, pathway):
     return min(rows, key=lambda w: (len(w.pathways), w.recording.row), default=None)
 
 
-def _pathway_row(fit: WiringFit, histograms: Histograms, pathway) -> dict[str, object]:
+def _pathway_row(fit: WiringFit, histograms: Histograms, pathway, code):
     everything = histograms.everything[pathway]
     touching = int(everything[1:].sum())
-    window = _own_window(fit, pathway) if fit.recorded[pathway] else None
-    if window is None:
-        histogram, (low, high) = histograms.reference[pathway], (0.0, REFERENCE_HIGH_UM)
-    else:
+    window = _own_window(fit, pathway) if fit.recorded[code] else None
+    low, high, histogram = 0.0, REFERENCE_HIGH_UM, histograms.reference[pathway]
+    # A slice is the row's own affair: pathways are reported in the whole circuit.
+    if window is not None and window.histograms[pathway].ndim == 1:
         histogram, (low, high) = window.histograms[pathway], window.recording.window_um()
-    law = fit.laws[pathway]
     row: dict[str, object] = {
         "pairs_n": int(everything.sum()),
         "touching_pairs_n": touching,
         "appositions_mean": everything @ np.arange(everything.size) / touching
         if touching
         else NAN,
-        "recorded": fit.recorded[pathway],
+        "recorded": bool(fit.recorded[code]),
         "distance_low_um": low,
         "distance_high_um": high if np.isfinite(high) else NAN,
     }
-    keys = ("p_connect", "p_connect_low", "p_connect_high", "p_ceiling")
-    keys += ("synapses_mean", "synapses_mean_low", "synapses_mean_high")
-    if not histogram.sum():
-        return row | dict.fromkeys(keys, NAN)
-    found = moments(histogram, law)
-    bounds = [
-        moments(histogram, Law(t0, law.t1, law.t2)).probability
-        if not np.isnan(t0)
-        else t0
-        for t0 in (fit.t0_low[pathway], fit.t0_high[pathway])
-    ]
-    values = (found.probability, *bounds, largest_probability(histogram), found.mean)
-    return row | dict(zip(keys, values + _mean_bounds(window, found), strict=True))
+    drawn, mine = show(fit.draws, {code: histogram}), show(fit.laws, {code: histogram})
+    points = (0.5, *INTERVAL, *_MIDDLE_HALF)
+    names = ("", "_low", "_high", "_low_50", "_high_50")
+    for name, values in (
+        ("p_connect", drawn.probability),
+        ("synapses_mean", drawn.mean),
+    ):
+        found = _quantiles(values, points)
+        row |= {name + end: x for end, x in zip(names, found, strict=True)}
+    some = histogram.sum() > 0
+    row["p_drawn"] = float(mine.probability[0])
+    row["p_ceiling"] = largest_probability(histogram) if some else NAN
+    return row
 
 
-def _mean_bounds(window, found) -> tuple[float, float]:
-    """95 % interval of the mean number of synapses, from the row that measured it."""
-    recording = window.recording if window else None
-    if recording is None or recording.synapses_pairs_n is None:
-        return NAN, NAN
-    sd = found.sd if recording.synapses_sd is None else recording.synapses_sd
-    half = _Z95 * sd / np.sqrt(recording.synapses_pairs_n)
-    return max(found.mean - half, 1.0), found.mean + half
-
-
-def pathways_table(circuit: Circuit, fit: WiringFit, histograms: Histograms):
-    """Return the columns of the table of pathways."""
+def _pathways(circuit: Circuit):
+    """Return (pre, post) of all pathways in the order of the tables."""
     names, n = circuit.spec.type_names, len(circuit.spec.type_names)
-    pathways = sorted(
-        np.ndindex(n, n), key=lambda pathway: (names[pathway[0]], names[pathway[1]])
-    )
-    rows = [_pathway_row(fit, histograms, pathway) for pathway in pathways]
-    columns = {key: [row[key] for row in rows] for key in rows[0]}
+    return sorted(np.ndindex(n, n), key=lambda p: (names[p[0]], names[p[1]]))
+
+
+def _with_types(circuit: Circuit, pathways, columns: dict) -> dict[str, object]:
+    names = circuit.spec.type_names
     columns["pre_type"] = names_column([pre for pre, _ in pathways], names)
     columns["post_type"] = names_column([post for _, post in pathways], names)
     return columns
 
 
-def _fit_row(row: RowFit, realised: Realised) -> dict[str, object]:
-    recording, fitted = row.window.recording, row.fitted
-    pairs_n = int(row.window.histogram().sum())
+def pathways_table(circuit: Circuit, fit: WiringFit, histograms: Histograms):
+    """Return the columns of the table of pathways."""
+    pathways, n = _pathways(circuit), len(circuit.spec.type_names)
+    rows = [_pathway_row(fit, histograms, p, p[0] * n + p[1]) for p in pathways]
+    columns = {key: [row[key] for row in rows] for key in rows[0]}
+    return _with_types(circuit, pathways, columns)
+
+
+def curves_table(circuit: Circuit, fit: WiringFit, bins: DistanceBins):
+    """Return the columns of the table of probability by distance."""
+    n, of_rows, rows = len(circuit.spec.type_names), [], []
+    for pathway in _pathways(circuit):
+        code = pathway[0] * n + pathway[1]
+        for place, histogram in enumerate(bins.histograms[pathway]):
+            drawn = show(fit.draws, {code: histogram}).probability
+            low, middle, high = _quantiles(drawn, (INTERVAL[0], 0.5, INTERVAL[1]))
+            some = histogram.sum() > 0
+            of_rows.append(pathway)
+            rows.append(
+                {
+                    "distance_low_um": BIN_EDGES_UM[place],
+                    "distance_high_um": BIN_EDGES_UM[place + 1],
+                    "pairs_n": int(histogram.sum()),
+                    "p_ceiling": largest_probability(histogram) if some else NAN,
+                    "p_connect_low": low,
+                    "p_connect": middle,
+                    "p_connect_high": high,
+                }
+            )
+    columns = {key: [row[key] for row in rows] for key in rows[0]}
+    return _with_types(circuit, of_rows, columns)
+
+
+def laws_table(circuit: Circuit, laws: Laws, draws: Laws) -> dict[str, object]:
+    """Return the columns of the table of laws: what the circuit has, then the draws."""
+    pathways, n = _pathways(circuit), len(circuit.spec.type_names)
+    codes = np.array([pre * n + post for pre, post in pathways])
+    columns: dict[str, object] = {
+        name: np.concatenate([getattr(laws, name), getattr(draws, name)])[
+            :, codes
+        ].reshape(-1)
+        for name in ("t0", "t1", "t2")
+    }
+    sets_n = draws.draws_n + 1
+    columns["draw"] = np.repeat(np.arange(sets_n), len(pathways))
+    names = circuit.spec.type_names
+    pre, post = np.tile(codes // n, sets_n), np.tile(codes % n, sets_n)
+    columns["pre_type"] = names_column(pre, names)
+    columns["post_type"] = names_column(post, names)
+    return columns
+
+
+def windows_table(circuit: Circuit, histograms: Histograms) -> dict[str, object]:
+    """Return the columns of the table of windows: every row's pairs, then all pairs."""
+    parts = [(w.recording.row, w.histograms) for w in histograms.windows]
+    parts.append((None, histograms.everything))
+    rows: list[tuple] = []
+    for number, by_pathway in parts:
+        for pathway in _pathways(circuit):
+            histogram = by_pathway.get(pathway)
+            if histogram is None:
+                continue
+            full = histogram if histogram.ndim == 2 else histogram[:, None]
+            a, lost = np.nonzero(full)
+            weight = full[a, lost].astype(float)
+            rows += [(number, *pathway, *x) for x in zip(a, lost, weight, strict=True)]
+    number, pre, post, a, lost, weight = zip(*rows, strict=True)
+    names = circuit.spec.type_names
+    return {
+        "recording_row": list(number),
+        "pre_type": names_column(pre, names),
+        "post_type": names_column(post, names),
+        "appositions_n": np.array(a),
+        "lost_n": np.array(lost),
+        "pairs": np.array(weight),
+    }
+
+
+def _fit_row(row: RowFit, realised: Realised, reciprocal: tuple[float, float]):
+    recording = row.window.recording
+    pairs = row.window.pairs_n
     n, k = recording.tested_n, recording.connected_n
     low, high = wilson_interval(k, n) if n else (NAN, NAN)
-    p, z = fitted.probability, NAN
+    p, z = float(row.fitted.probability[0]), NAN
     if n and 0 < p < 1:
         z = (k / n - p) / np.sqrt(p * (1 - p) / n)
     measured = recording.measured_probability
     some = realised.connected > 0
     mean = realised.synapses / realised.connected if some else NAN
     spread = realised.squares / realised.connected - mean**2 if some else NAN
-    return {
-        "row": recording.row,
-        "source": recording.source,
-        "pre_type": recording.pre_type,
-        "post_type": recording.post_type,
-        "use": recording.use,
-        "distance_kind": recording.distance_kind,
-        "distance_low_um": recording.distance_low_um,
-        "distance_high_um": recording.distance_high_um,
-        "tested_n": n,
-        "connected_n": k,
+    p_low, p_high = _quantiles(row.drawn.probability, INTERVAL)
+    kept = (
+        "row source pre_type post_type use distance_kind distance_low_um"
+        " distance_high_um slice_thickness_um soma_depth_low_um soma_depth_high_um"
+        " tested_n connected_n synapses_pairs_n reciprocal_tested_n"
+        " reciprocal_connected_n"
+    )
+    return {name: getattr(recording, name) for name in kept.split()} | {
         "p_measured": NAN if measured is None else measured,
         "p_measured_low": low,
         "p_measured_high": high,
         "p_fitted": p,
-        "p_realised": realised.connected / pairs_n if pairs_n else NAN,
-        "pairs_in_window_n": pairs_n,
+        "p_fitted_low": p_low,
+        "p_fitted_high": p_high,
+        "p_realised": realised.connected / pairs if pairs else NAN,
+        "pairs_in_window": pairs,
         "z": z,
         "synapses_mean_measured": recording.synapses_mean,
-        "synapses_mean_fitted": fitted.mean,
+        "synapses_mean_fitted": float(row.fitted.mean[0]),
         "synapses_mean_realised": mean,
         "synapses_sd_measured": recording.synapses_sd,
-        "synapses_sd_fitted": fitted.sd,
+        "synapses_sd_fitted": float(row.fitted.sd[0]),
         "synapses_sd_realised": np.sqrt(max(spread, 0.0)) if some else NAN,
+        "reciprocal_fitted": reciprocal[0],
+        "reciprocal_realised": reciprocal[1],
         "feasible": row.feasible,
         "note": row.note,
     }
 
 
-def fit_table(fit: WiringFit, realised: Sequence[Realised]) -> dict[str, list]:
-    """Return the columns of the table of recordings."""
-    rows = [_fit_row(row, shown) for row, shown in zip(fit.rows, realised, strict=True)]
+def fit_table(
+    fit: WiringFit, realised: Sequence[Realised], both_ways: Sequence[float]
+) -> dict[str, list]:
+    """Return the columns of the table of recordings.
+
+    `both_ways`: for every row the realised share of reciprocal pairs, or NaN.
+    """
+    fitted = {row.window.recording.row: row for row in fit.reciprocity.rows}
+    rows = []
+    for row, shown, share in zip(fit.rows, realised, both_ways, strict=True):
+        dyads = fitted.get(row.window.recording.row)
+        columns = _fit_row(row, shown, (dyads.fitted if dyads else NAN, share))
+        if dyads and dyads.note:
+            columns["note"] = "; ".join(filter(None, [columns["note"], dyads.note]))
+            columns["feasible"] = False
+        rows.append(columns)
     return {key: [row[key] for row in rows] for key in rows[0]} if rows else {}
 
 
@@ -146,15 +235,8 @@ def recordings_met(fit_columns: dict[str, list]) -> tuple[int, int]:
 
     Met: the fitted probability lies within the row's own 95 % interval.
     """
-    rows = list(
-        zip(
-            fit_columns["use"],
-            fit_columns["p_measured_low"],
-            fit_columns["p_fitted"],
-            fit_columns["p_measured_high"],
-            strict=True,
-        )
-    )
+    names = ("use", "p_measured_low", "p_fitted", "p_measured_high")
+    rows = list(zip(*(fit_columns.get(name, []) for name in names), strict=True))
     counted = [row for row in rows if row[0] == "fit" and not np.isnan(row[1])]
     met = [1 for _, low, p, high in counted if low <= p <= high]
     return len(met), len(counted)

@@ -80,8 +80,7 @@ class SiteStore:
         with np.load(self.path(block)) as stored:
             return Appositions(**{name: stored[name] for name in _NAMES})
 
-    def pairs(self):
-        """Yield (pre, post, appositions) of each block, without the sites."""
-        for block in range(len(self.bounds)):
-            with np.load(self.path(block)) as stored:
-                yield stored["pre"], stored["post"], np.diff(stored["first"])
+    def pairs_of(self, block: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """Read (pre, post, appositions) of the pairs of a block, without the sites."""
+        with np.load(self.path(block)) as stored:
+            return stored["pre"], stored["post"], np.diff(stored["first"])

@@ -2,165 +2,225 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.spatial import cKDTree
 
+from circuitgen.appositions import (
+    Appositions,
+    kept_sites,
+    make_paths,
+    pair_weight,
+    place_slices,
+)
 from circuitgen.run.circuit import Circuit, soma_offsets
-from circuitgen.spec import Recording
+from circuitgen.run.distances import DistanceBins, DistanceTally
+from circuitgen.run.dyads import Dyads
+from circuitgen.run.pair_counter import PairCounter
+from circuitgen.run.protocol import (
+    REFERENCE_HIGH_UM,
+    Protocol,
+    protocol_of,
+    within,
+)
+from circuitgen.run.sites import SiteStore
 from circuitgen.wiring import Window
 
-# Pathways without a recording of their own report their probability for somata within
-# this distance: common practice in paired recordings.
-REFERENCE_HIGH_UM = 100.0
 
+class PairBlock:
+    """The touching pairs of different cells of one block, sorted by pathway."""
 
-@dataclass(frozen=True)
-class Protocol:
-    """Which ordered pairs of cells a recording samples; distances in micrometres."""
+    def __init__(self, circuit: Circuit, pre, post, appositions):
+        pathway = circuit.pathway(pre, post)
+        pathway[pre == post] = -1
+        order = np.argsort(pathway.astype(np.int32), kind="stable")
+        self.order = order[np.searchsorted(pathway[order], 0) :]
+        self.pre, self.post = pre[self.order], post[self.order]
+        self.pathway, self.appositions = pathway[self.order], appositions[self.order]
+        self.offsets = soma_offsets(circuit, self.pre, self.post)
+        self.lateral_um = np.linalg.norm(self.offsets[:, :2], axis=1)
+        self.distance_um = np.linalg.norm(self.offsets, axis=1)
+        self._types_n = len(circuit.spec.cell_types)
+        self._bounds = np.searchsorted(self.pathway, np.arange(self._types_n**2 + 1))
 
-    pre_types: tuple[int, ...]
-    post_types: tuple[int, ...]
-    low_um: float
-    high_um: float
-    lateral: bool
-
-    def selects(self, pathway, offsets, types_n: int) -> np.ndarray:
-        """Tell which pairs, by pathway code and soma offset, are sampled."""
-        allowed = np.zeros((types_n, types_n), bool)
-        allowed[np.ix_(self.pre_types, self.post_types)] = True
-        distance = np.linalg.norm(offsets[:, :2] if self.lateral else offsets, axis=1)
-        inside = (distance >= self.low_um) & (distance <= self.high_um)
-        return allowed.reshape(-1)[pathway] & inside
-
-
-def protocol_of(circuit: Circuit, recording: Recording) -> Protocol:
-    """Return the protocol of a recording."""
-    low, high = recording.window_um()
-    return Protocol(
-        circuit.spec.members(recording.pre_type),
-        circuit.spec.members(recording.post_type),
-        low,
-        high,
-        recording.distance_kind == "lateral",
-    )
-
-
-def everything_protocol(circuit: Circuit) -> Protocol:
-    """Return the protocol that samples every ordered pair of different cells."""
-    everyone = tuple(range(len(circuit.spec.cell_types)))
-    return Protocol(everyone, everyone, 0.0, np.inf, False)
-
-
-def reference_protocol(circuit: Circuit) -> Protocol:
-    """Return the protocol that pathways without a recording are reported under."""
-    everyone = tuple(range(len(circuit.spec.cell_types)))
-    return Protocol(everyone, everyone, 0.0, REFERENCE_HIGH_UM, False)
-
-
-class PairCounter:
-    """Counts all ordered pairs of two types within a distance, touching or not."""
-
-    def __init__(self, circuit: Circuit):
-        self._cells, self._wrap = circuit.cells, circuit.wrap_um
-        self._trees: dict[tuple[int, bool], cKDTree] = {}
-
-    def _tree(self, cell_type: int, lateral: bool) -> cKDTree:
-        key = (cell_type, lateral)
-        if key not in self._trees:
-            points = self._cells.position_um[self._cells.type_index == cell_type]
-            size = 2 if lateral else 3
-            box = None
-            if self._wrap[0] > 0:
-                box = np.array([*self._wrap, 0.0])[:size]
-                points = points.copy()
-                points[:, :2] %= self._wrap
-                # A tiny negative number comes out of the division as the period.
-                points[:, :2][points[:, :2] >= self._wrap] = 0.0
-            self._trees[key] = cKDTree(points[:, :size], boxsize=box)
-        return self._trees[key]
-
-    def count(self, pre: int, post: int, low_um, high_um, lateral) -> int:
-        """Return the number of ordered pairs of different cells within the window."""
-        a, b = self._tree(pre, lateral), self._tree(post, lateral)
-        if np.isfinite(high_um):
-            total = int(a.count_neighbors(b, high_um))
-        else:
-            total = a.n * b.n
-        if low_um > 0:
-            return total - int(a.count_neighbors(b, np.nextafter(low_um, 0.0)))
-        return total - (a.n if pre == post else 0)
+    def selected(self, protocol: Protocol) -> np.ndarray:
+        """Return the rows that a protocol samples."""
+        distance = self.lateral_um if protocol.lateral else self.distance_um
+        parts = [
+            begin + np.flatnonzero(protocol.holds(distance[begin:end]))
+            for begin, end in (
+                self._bounds[code : code + 2]
+                for code in protocol.pathways(self._types_n)
+            )
+            if end > begin
+        ]
+        return np.concatenate(parts) if parts else np.zeros(0, np.int64)
 
 
 class Tally:
-    """Histograms of appositions by pathway under one protocol, block after block."""
+    """Histograms of appositions by pathway under one protocol, block after block.
+
+    `counts` (pathway, a, lost); nothing is lost without a slice.
+    """
 
     def __init__(self, circuit: Circuit, protocol: Protocol):
-        self._circuit, self.protocol = circuit, protocol
+        self.protocol = protocol
         self._types_n = len(circuit.spec.cell_types)
-        self._found: dict[tuple[int, int], int] = {}
+        self._codes = protocol.pathways(self._types_n)
+        self.counts = np.zeros((self._codes.size, 1, 1))
+        # Chances of the touching pairs: placements only estimate them.
+        self._touching = np.zeros(self._codes.size)
 
-    def add(self, pathway, offsets, appositions) -> None:
-        """Count the touching pairs of a block."""
-        chosen = self.protocol.selects(pathway, offsets, self._types_n)
-        pathway, appositions = pathway[chosen], appositions[chosen]
-        base = int(appositions.max(initial=0)) + 1
-        keys, counts = np.unique(pathway * base + appositions, return_counts=True)
-        for key, count in zip(keys.tolist(), counts.tolist(), strict=True):
-            place = (key // base, key % base)
-            self._found[place] = self._found.get(place, 0) + count
+    def add(self, pathway, appositions) -> None:
+        """Count touching pairs."""
+        self._grow(int(appositions.max(initial=0)) + 1, 1)
+        code, a_size = np.searchsorted(self._codes, pathway), self.counts.shape[1]
+        found = np.bincount(code * a_size + appositions, minlength=self.counts.size)
+        self.counts[:, :, 0] += found.reshape(-1, a_size)
+        self._touching += np.bincount(code, minlength=self._codes.size)
+
+    def add_cut(self, pathway, appositions, kept, weight, chance) -> None:
+        """Count placements of slices around touching pairs, (pairs, placements)."""
+        lost = appositions[:, None] - kept
+        self._grow(int(appositions.max(initial=0)) + 1, int(lost.max(initial=0)) + 1)
+        _, a_size, lost_size = self.counts.shape
+        code = np.searchsorted(self._codes, pathway)
+        place = (code * a_size + appositions)[:, None] * lost_size + lost
+        found = np.bincount(
+            place.reshape(-1), weight.reshape(-1), minlength=self.counts.size
+        )
+        self.counts += found.reshape(self.counts.shape)
+        self._touching += np.bincount(code, chance, minlength=self._codes.size)
+
+    def _grow(self, a_size: int, lost_size: int) -> None:
+        _, a_now, lost_now = self.counts.shape
+        more = (max(a_size - a_now, 0), max(lost_size - lost_now, 0))
+        if any(more):
+            self.counts = np.pad(self.counts, ((0, 0), (0, more[0]), (0, more[1])))
 
     def histograms(self, counter: PairCounter) -> dict[tuple[int, int], np.ndarray]:
         """Return the histogram of every pathway, pairs without apposition included."""
-        protocol, n = self.protocol, self._types_n
-        window = (protocol.low_um, protocol.high_um, protocol.lateral)
-        by_pathway: dict[int, dict[int, int]] = {}
-        for (code, a), count in self._found.items():
-            by_pathway.setdefault(code, {})[a] = count
         out = {}
-        for pre in protocol.pre_types:
-            for post in protocol.post_types:
-                found = by_pathway.get(pre * n + post, {})
-                histogram = np.zeros(max(found, default=0) + 1, np.int64)
-                for a, count in found.items():
-                    histogram[a] = count
-                # Autapses touch but are no pair of different cells.
-                pairs_n = counter.count(pre, post, *window)
-                histogram[0] = max(pairs_n - histogram.sum(), 0)
-                out[pre, post] = histogram
+        for place, code in enumerate(self._codes.tolist()):
+            pre, post = divmod(code, self._types_n)
+            found = self.counts[place]
+            most = int(np.flatnonzero(found.any(axis=1)).max(initial=0))
+            histogram = found[: most + 1].copy()
+            total = counter.count(pre, post, self.protocol)
+            # Autapses touch but are no pair of different cells.
+            histogram[0, 0] = max(total - self._touching[place], 0.0)
+            if self.protocol.cut is None:
+                out[pre, post] = np.rint(histogram[:, 0]).astype(np.int64)
+            else:
+                out[pre, post] = histogram[:, : most + 1]
         return out
+
+
+class SliceLoss:
+    """Counts which appositions of pairs the slices placed around them keep."""
+
+    def __init__(self, circuit: Circuit):
+        self._circuit, self._paths = circuit, make_paths(circuit.arbors)
+
+    def placed(self, protocol: Protocol, pre, post, offsets, first, sites):
+        """Return sites kept and weights, (pairs, placements) each."""
+        cells = self._circuit.cells
+        placed = place_slices(
+            self._circuit.spec.seed,
+            protocol.cut,
+            pre,
+            post,
+            offsets,
+            protocol.placements_n,
+            protocol.row,
+        )
+        sides = [(cells.arbor_index[c], cells.azimuth_deg[c]) for c in (pre, post)]
+        kept = kept_sites(
+            self._paths, protocol.cut, placed, sides, first, sites, offsets
+        )
+        return kept, placed.weight
+
+    def lose(self, block: PairBlock, sites: Appositions, tally: Tally) -> None:
+        """Add a block's pairs to a tally under its slice."""
+        protocol = tally.protocol
+        rows = block.selected(protocol)
+        first, chosen = gather_sites(sites, block.order[rows])
+        kept, weight = self.placed(
+            protocol,
+            block.pre[rows],
+            block.post[rows],
+            block.offsets[rows],
+            first,
+            chosen,
+        )
+        chance = pair_weight(block.lateral_um[rows], protocol.cut)
+        tally.add_cut(block.pathway[rows], block.appositions[rows], kept, weight, chance)
+
+
+def gather_sites(sites: Appositions, pairs: np.ndarray):
+    """Return where the sites of some pairs begin, and the sites, pair after pair."""
+    count = sites.count[pairs]
+    first = np.concatenate([[0], np.cumsum(count)])
+    index = np.arange(first[-1]) - np.repeat(first[:-1], count)
+    index += np.repeat(sites.first[pairs], count)
+    return first, (
+        sites.pre_segment[index],
+        sites.pre_fraction[index].astype(float),
+        sites.post_segment[index],
+        sites.post_fraction[index].astype(float),
+    )
 
 
 @dataclass(frozen=True)
 class Histograms:
-    """Histograms by pathway: of all pairs, of the reference window, of every row."""
+    """Histograms by pathway: of all pairs, of the reference window, of every row.
+
+    `bins` are by distance, `protocols` those of the rows, in order.
+    """
 
     everything: dict[tuple[int, int], np.ndarray]
     reference: dict[tuple[int, int], np.ndarray]
+    bins: DistanceBins
     windows: tuple[Window, ...]
+    protocols: tuple[Protocol, ...]
+    dyads: Dyads
 
 
-def take_histograms(
-    circuit: Circuit, blocks: Iterable[tuple[np.ndarray, np.ndarray, np.ndarray]]
-) -> Histograms:
-    """Go once through the touching pairs (pre, post, appositions) of all blocks."""
-    recordings = circuit.spec.recordings
-    protocols = [everything_protocol(circuit), reference_protocol(circuit)]
-    protocols += [protocol_of(circuit, recording) for recording in recordings]
+def take_histograms(circuit: Circuit, store: SiteStore, progress) -> Histograms:
+    """Go once through the touching pairs of all blocks."""
+    recordings, counter = circuit.spec.recordings, PairCounter(circuit)
+    rows = [counter.with_placements(protocol_of(circuit, r)) for r in recordings]
+    protocols = [within(circuit, np.inf), within(circuit, REFERENCE_HIGH_UM), *rows]
     tallies = [Tally(circuit, protocol) for protocol in protocols]
-    for pre, post, appositions in blocks:
-        others = pre != post
-        pre, post, appositions = pre[others], post[others], appositions[others]
-        pathway = circuit.pathway(pre, post)
-        offsets = soma_offsets(circuit, pre, post)
+    cut = [tally for tally in tallies if tally.protocol.cut is not None]
+    loss = SliceLoss(circuit) if cut else None
+    distances = DistanceTally(len(circuit.spec.cell_types))
+    for number in range(len(store.bounds)):
+        sites = store.load(number) if cut else None
+        pre, post, count = store.pairs_of(number)
+        block = PairBlock(circuit, pre, post, count)
         for tally in tallies:
-            tally.add(pathway, offsets, appositions)
-    counter = PairCounter(circuit)
-    everything, reference, *rows = [tally.histograms(counter) for tally in tallies]
-    windows = tuple(
-        Window(recording, histograms)
-        for recording, histograms in zip(recordings, rows, strict=True)
-    )
-    return Histograms(everything, reference, windows)
+            if tally.protocol.cut is not None:
+                loss.lose(block, sites, tally)
+            else:
+                chosen = block.selected(tally.protocol)
+                tally.add(block.pathway[chosen], block.appositions[chosen])
+        distances.add(block.pathway, block.distance_um, block.appositions)
+        progress.advance()
+    everything, reference, *by_row = [tally.histograms(counter) for tally in tallies]
+    counted = [
+        protocol
+        for protocol, recording in zip(rows, recordings, strict=True)
+        if recording.reciprocal_tested_n is not None
+    ]
+    blocks = (store.pairs_of(number) for number in range(len(store.bounds)))
+    dyads = Dyads(circuit, counted, blocks)
+    windows = []
+    for recording, protocol, histograms in zip(recordings, rows, by_row, strict=True):
+        both, pairs_n = {}, 0.0
+        if recording.reciprocal_tested_n is not None:
+            both = dyads.histograms(protocol)
+            pairs_n = dyads.pairs_n(protocol, histograms)
+        windows.append(Window(recording, histograms, both, pairs_n))
+    bins = distances.bins(counter)
+    return Histograms(everything, reference, bins, tuple(windows), tuple(rows), dyads)

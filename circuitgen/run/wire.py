@@ -18,31 +18,45 @@ from circuitgen.core.progress import Progress
 from circuitgen.core.run_tables import EDGES, EDGES_TEXT, PAIRS, SYNAPSES
 from circuitgen.core.tables import names_column
 from circuitgen.run.circuit import Circuit, soma_offsets
+from circuitgen.run.dyads import Dyads
 from circuitgen.run.places import in_circuit_frame, places_on_cable, target_codes
+from circuitgen.run.protocol import Protocol
 from circuitgen.run.sites import SiteStore
-from circuitgen.run.windows import Protocol
-from circuitgen.wiring import LawTables, choose_sites, draw_synapses
+from circuitgen.run.windows import PairBlock, SliceLoss, gather_sites
+from circuitgen.wiring import (
+    LawTables,
+    choose_sites,
+    connection_chance,
+    draw_synapses,
+)
 
 
 @dataclass(frozen=True)
 class Realised:
     """What the drawn circuit shows under a protocol, summed over touching pairs.
 
-    `connected` pairs, their `synapses`, and the sum of the squares of these.
+    `connected` pairs, their `synapses`, and the sum of the squares of these; in a
+    slice what is seen there, by the pairs' chances to be patched.
     """
 
-    connected: int
-    synapses: int
-    squares: int
+    connected: float
+    synapses: float
+    squares: float
 
 
 @dataclass(frozen=True)
 class Wiring:
-    """What every block needs to be wired."""
+    """What every block needs to be wired.
+
+    `log_odds` (types, types) are those of reciprocity, `dyads` the pairs it needs.
+    """
 
     circuit: Circuit
     tables: LawTables
+    log_odds: np.ndarray
+    dyads: Dyads
     protocols: Sequence[Protocol]
+    loss: SliceLoss
     folder: Path
     work: Path
 
@@ -132,16 +146,40 @@ def _edge_columns(pairs, synapses, pair, delay_ms):
     return columns
 
 
-def _realised(wiring: Wiring, sites, synapses, pathway, offsets) -> np.ndarray:
+def _realised(wiring: Wiring, sites: Appositions, synapses, site) -> np.ndarray:
     """Return connected pairs, synapses and their squares by protocol, (n, 3)."""
-    connected = np.flatnonzero((synapses > 0) & (sites.pre != sites.post))
-    pathway, offsets = pathway[connected], offsets[connected]
-    n = synapses[connected].astype(np.int64)
-    out = np.zeros((len(wiring.protocols), 3), np.int64)
-    types_n = len(wiring.circuit.spec.cell_types)
+    connected = np.flatnonzero(synapses)
+    drawn = Appositions(
+        pre=sites.pre[connected],
+        post=sites.post[connected],
+        first=np.concatenate([[0], np.cumsum(synapses[connected], dtype=np.int64)]),
+        pre_segment=sites.pre_segment[site],
+        post_segment=sites.post_segment[site],
+        pre_fraction=sites.pre_fraction[site],
+        post_fraction=sites.post_fraction[site],
+        gap_um=sites.gap_um[site],
+    )
+    block = PairBlock(wiring.circuit, drawn.pre, drawn.post, drawn.count)
+    out = np.zeros((len(wiring.protocols), 3))
     for row, protocol in enumerate(wiring.protocols):
-        inside = n[protocol.selects(pathway, offsets, types_n)]
-        out[row] = inside.size, inside.sum(), (inside**2).sum()
+        rows = block.selected(protocol)
+        if protocol.cut is None:
+            n, weight = block.appositions[rows].astype(float), 1.0
+        else:
+            first, chosen = gather_sites(drawn, block.order[rows])
+            n, weight = wiring.loss.placed(
+                protocol,
+                block.pre[rows],
+                block.post[rows],
+                block.offsets[rows],
+                first,
+                chosen,
+            )
+        out[row] = (
+            ((n > 0) * weight).sum(),
+            (n * weight).sum(),
+            (n.astype(float) ** 2 * weight).sum(),
+        )
     return out
 
 
@@ -150,9 +188,11 @@ def wire_block(wiring: Wiring, block: int, sites: Appositions) -> None:
     circuit = wiring.circuit
     pathway = circuit.pathway(sites.pre, sites.post)
     offsets = soma_offsets(circuit, sites.pre, sites.post)
-    synapses = draw_synapses(
-        circuit.spec.seed, sites.pre, sites.post, sites.count, pathway, wiring.tables
+    keyed = (circuit.spec.seed, sites.pre, sites.post, sites.count, pathway)
+    chance = connection_chance(
+        *keyed, wiring.tables, wiring.log_odds, wiring.dyads.appositions
     )
+    synapses = draw_synapses(*keyed, wiring.tables, chance)
     pairs = _pair_columns(wiring, sites, pathway, offsets)
     PAIRS.write_parquet(wiring.part("pairs", block), pairs)
     pair, site = _synapse_rows(wiring, sites, synapses)
@@ -160,14 +200,14 @@ def wire_block(wiring: Wiring, block: int, sites: Appositions) -> None:
     SYNAPSES.write_parquet(wiring.part("synapses", block), columns)
     edges = _edge_columns(pairs, synapses, pair, columns["delay_ms"])
     EDGES.write_parquet(wiring.edges_part(block), edges)
-    tally = _realised(wiring, sites, synapses, pathway, offsets)
+    tally = _realised(wiring, sites, synapses, site)
     with whole_file(wiring.tally_part(block)) as partial, partial.open("wb") as out:
         np.save(out, tally)
 
 
 def wire_all(wiring: Wiring, store: SiteStore, threads: int) -> list[Realised]:
     """Wire every block that an earlier try has not finished; sum what was realised."""
-    total = np.zeros((len(wiring.protocols), 3), np.int64)
+    total = np.zeros((len(wiring.protocols), 3))
 
     def work(block: int) -> int:
         done = wiring.tally_part(block).exists()

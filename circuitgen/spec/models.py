@@ -100,6 +100,13 @@ class Layer(Part):
     thickness_um: LengthUm
 
 
+class BoutonDensity(Part):
+    """Synapses that an axon makes per length, and how surely that is known."""
+
+    mean: Positive
+    sd: Positive
+
+
 class CellTypeEntry(Part):
     """A cell type as the file has it: `morphologies` are patterns of file names."""
 
@@ -116,6 +123,7 @@ class CellTypeEntry(Part):
     ] = ("soma", "basal", "apical")
     # 40 um: common practice, no source.
     ais_um: PositionUm = 40.0
+    bouton_density_per_um: BoutonDensity | None = None
 
     @classmethod
     def rules(cls, given: dict) -> Iterator[RuleError]:
@@ -148,6 +156,8 @@ class CellType(CellTypeEntry):
         What the type's own axon may contact.
     ais_um : float
         Length of axon from the soma that is axon initial segment.
+    bouton_density_per_um : BoutonDensity or None
+        Synapses per micrometre of the type's axon.
     """
 
     name: str

@@ -8,10 +8,14 @@ import numpy as np
 
 from circuitgen.core.draws import uniforms
 from circuitgen.wiring import kernels
-from circuitgen.wiring.law import Law, connection_probability, count_moments, log_ways
+from circuitgen.wiring.law import connection_probability, count_moments, log_ways
+from circuitgen.wiring.laws import Laws, connection_table
+from circuitgen.wiring.reciprocity import conditional_probability
 
 _CHUNK = 1 << 20
 _DRAWS = 4
+# The 90 % interval.
+INTERVAL = (0.05, 0.95)
 
 
 @dataclass(frozen=True)
@@ -19,7 +23,7 @@ class LawTables:
     """What the laws say for every number of appositions, tabulated.
 
     Arrays by (pathway, appositions): `connects` P(connected), `low` and `high` its
-    interval (NaN where none), `expected` synapses, `ways` S_a. By pathway: t1, t2.
+    posterior 5 and 95 % points, `expected` synapses, `ways` S_a. By pathway: t1, t2.
     """
 
     connects: np.ndarray
@@ -31,30 +35,63 @@ class LawTables:
     t2: np.ndarray
 
 
-def tabulate(
-    laws: list[Law], t0_low: np.ndarray, t0_high: np.ndarray, most: int
-) -> LawTables:
-    """Tabulate laws for 0 to `most` appositions; t0_low and t0_high may be NaN."""
+def tabulate(laws: Laws, draws: Laws, most: int) -> LawTables:
+    """Tabulate laws and the spread of their draws for 0 to `most` appositions."""
     a = np.arange(most + 1)
     rows: dict[str, list[np.ndarray]] = {
         name: [] for name in ("connects", "low", "high", "expected", "ways")
     }
-    for law, low, high in zip(laws, t0_low, t0_high, strict=True):
+    for pathway in range(laws.t0.shape[1]):
+        law = laws.law(pathway)
         connects = connection_probability(a, law)
         rows["connects"].append(connects)
         rows["ways"].append(log_ways(a, law.t1, law.t2))
         rows["expected"].append(connects * count_moments(a, law.t1, law.t2)[0])
-        for name, t0 in (("low", low), ("high", high)):
-            rows[name].append(connection_probability(a, Law(t0, law.t1, law.t2)))
+        drawn = connection_table(draws, pathway, most)
+        for name, bound in zip(("low", "high"), INTERVAL, strict=True):
+            rows[name].append(np.quantile(drawn, bound, axis=0))
     return LawTables(
         **{name: np.array(parts) for name, parts in rows.items()},
-        t1=np.array([law.t1 for law in laws]),
-        t2=np.array([law.t2 for law in laws]),
+        t1=laws.t1[0],
+        t2=laws.t2[0],
     )
 
 
+def connection_chance(
+    seed, pre, post, appositions, pathway, tables: LawTables, log_odds, reverse
+) -> np.ndarray:
+    """Return each pair's chance to connect, given what the lower cell id's way does.
+
+    The direction from the lower cell id is drawn by its own probability, the other
+    given the outcome; both by draws keyed by their own ids, so that neither blocks nor
+    order matter. Without reciprocity a pair's chance is its probability.
+
+    Parameters
+    ----------
+    seed, pre, post, appositions, pathway, tables
+        As in `draw_synapses`.
+    log_odds : (types, types)
+        Log odds ratios of reciprocity, symmetric.
+    reverse : callable
+        Gives the appositions of ordered pairs (pre, post) of types with reciprocity.
+    """
+    chance = tables.connects[pathway, appositions]
+    types_n = log_odds.shape[0]
+    from_type, to_type = np.divmod(pathway, types_n)
+    ratio = log_odds[from_type, to_type]
+    later = np.flatnonzero((ratio != 0.0) & (pre > post))
+    if later.size:
+        back = to_type[later] * types_n + from_type[later]
+        first = tables.connects[back, reverse(post[later], pre[later])]
+        outcome = uniforms(seed, "connection", post[later], pre[later])[:, 0] < first
+        chance[later] = conditional_probability(
+            chance[later], first, ratio[later], outcome
+        )
+    return chance
+
+
 def draw_synapses(
-    seed, pre, post, appositions, pathway, tables: LawTables
+    seed, pre, post, appositions, pathway, tables: LawTables, chance
 ) -> np.ndarray:
     """Draw how many synapses every pair has; 0 means unconnected.
 
@@ -68,6 +105,9 @@ def draw_synapses(
         Appositions of each pair.
     pathway : int (n,)
         Row of each pair in the tables.
+    tables : LawTables
+    chance : float (n,)
+        Of connection; see `connection_chance`.
 
     Returns
     -------
@@ -80,7 +120,7 @@ def draw_synapses(
             uniforms(seed, "connection", pre[part], post[part]),
             appositions[part],
             pathway[part],
-            tables.connects,
+            chance[part],
             tables.ways,
             tables.t1,
             tables.t2,

@@ -8,15 +8,15 @@ from circuitgen.core.compilation import kernel
 
 
 @kernel
-def draw_counts(uniform, appositions, pathway, connects, ways, t1, t2, out):
+def draw_counts(uniform, appositions, pathway, chance, ways, t1, t2, out):
     """Draw the synapses of every pair into `out`.
 
     uniform (n, 4): column 0 decides connection, column 1 the number given connection.
-    connects, ways (pathways, most + 1): P(connected) and S_a by appositions.
+    chance (n,): of connection. ways (pathways, most + 1): S_a by appositions.
     """
     for i in range(appositions.size):
         a, k = appositions[i], pathway[i]
-        if uniform[i, 0] >= connects[k, a]:
+        if uniform[i, 0] >= chance[i]:
             out[i] = 0
             continue
         # Logarithms all along: the first terms may be too small for a double.
