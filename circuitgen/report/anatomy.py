@@ -1,0 +1,206 @@
+"""The column from the side, and connected pairs in space."""
+
+from __future__ import annotations
+
+import numpy as np
+from scipy.spatial import cKDTree
+
+from circuitgen.morphology.arbor import Kind
+from circuitgen.report.drawing import ArborShelf, drawn_cell, placed
+from circuitgen.report.source import RunTables
+from circuitgen.report.totals import thickness_um
+
+MOST_SOMATA = 6000
+PROFILE_BIN_UM = 50.0
+
+
+def somata(run: RunTables) -> dict:
+    """Return somata from the side, whole micrometres, evenly thinned when many."""
+    cells = run.cells
+    step = -(-cells.type_index.size // MOST_SOMATA)
+    flat = np.column_stack([cells.position_um[:, 0], cells.depth_um])
+    flat = np.rint(flat).astype(int)
+    return {
+        "step": step,
+        "points": [
+            flat[cells.type_index == index][::step].ravel().tolist()
+            for index in range(len(run.type_names))
+        ],
+    }
+
+
+def cross_section_mm2(run: RunTables) -> float | None:
+    """Return the column's area seen from the pia; None for a mesh."""
+    column = run.spec["column"]
+    if column["shape"] == "cylinder":
+        area = np.pi / 4 * column["diameter_um"] ** 2
+    elif column["shape"] == "hexagon":
+        area = np.sqrt(3) / 2 * column["across_flats_um"] ** 2
+    elif column["shape"] == "box":
+        area = column["width_um"] * column["length_um"]
+    else:
+        return None
+    return float(area) / 1e6
+
+
+def profile(run: RunTables) -> dict:
+    """Return somata by type and depth, and what the spec asks for in each layer.
+
+    Densities per mm3 where the area is known, cells per bin elsewhere.
+    """
+    depth, area = thickness_um(run), cross_section_mm2(run)
+    edges = np.append(np.arange(0, depth - 1e-9, PROFILE_BIN_UM), depth)
+    slab_mm3 = None if area is None else area * np.diff(edges) / 1e3
+    layers, top = [], 0.0
+    for layer in run.spec["layers"]:
+        bottom = top + layer["thickness_um"]
+        layers.append({"name": str(layer["name"]), "top": top, "bottom": bottom})
+        top = bottom
+    built, wanted = [], []
+    for index, name in enumerate(run.type_names):
+        own = run.cells.depth_um[run.cells.type_index == index]
+        counts = np.histogram(own, edges)[0]
+        values = counts if area is None else counts / slab_mm3
+        built.append([float(f"{value:.4g}") for value in values])
+        wanted.append(_wanted(run.spec["cell_types"][name], layers, area))
+    return {
+        "edges": edges.tolist(),
+        "layers": layers,
+        "per_mm3": area is not None,
+        "built": built,
+        "wanted": wanted,
+    }
+
+
+def _wanted(entry: dict, layers: list[dict], area: float | None) -> list:
+    """Return what the spec asks of a type in each layer; None where it says nothing."""
+    out = []
+    for layer in layers:
+        density = (entry.get("density_per_mm3") or {}).get(layer["name"])
+        count = (entry.get("count") or {}).get(layer["name"])
+        if density is None and count is not None and area is not None:
+            density = count / (area * (layer["bottom"] - layer["top"]) / 1e3)
+        out.append(None if density is None or area is None else float(density))
+    return out
+
+
+def shown_cells(run: RunTables, shelf: ArborShelf) -> list[dict]:
+    """Return up to four whole cells in place, each the nearest of its type to the axis.
+
+    The most numerous excitatory type of each of up to three layers, from the top, and
+    the most numerous inhibitory type.
+    """
+    cells = run.cells
+    counts = np.bincount(cells.type_index, minlength=len(run.type_names))
+    depth = [
+        float(cells.depth_um[cells.type_index == t].mean()) if counts[t] else np.inf
+        for t in range(len(run.type_names))
+    ]
+    bounds = np.cumsum([layer["thickness_um"] for layer in run.spec["layers"]])
+    best: dict[tuple[bool, int], int] = {}
+    for t in np.argsort(-counts, kind="stable").tolist():
+        if counts[t]:
+            sign = bool(run.is_excitatory[t])
+            key = (sign, int(np.searchsorted(bounds, depth[t])) if sign else 0)
+            best.setdefault(key, t)
+    chosen = sorted((t for (sign, _), t in best.items() if sign), key=lambda t: -counts[t])
+    chosen = [*chosen[:3], *(t for (sign, _), t in best.items() if not sign)]
+    middle = cells.position_um[:, :2].mean(axis=0)
+    off = np.linalg.norm(cells.position_um[:, :2] - middle, axis=1)
+    out = []
+    for t in sorted(chosen, key=lambda t: depth[t]):
+        own = np.flatnonzero(cells.type_index == t)
+        drawn = drawn_cell(run, shelf, int(own[off[own].argmin()]))
+        if drawn:
+            out.append(drawn)
+    return out
+
+
+def shown_pairs(run: RunTables, shelf: ArborShelf) -> list[dict]:
+    """Return one typical connected pair of each class of signs, as it lies in space.
+
+    Typical: it has the class's mean number of synapses, rounded; of those pairs the
+    one whose soma distance is nearest to the class's median.
+    """
+    edges, cells = run.edges, run.cells
+    pre, post = edges["pre_cell_id"], edges["post_cell_id"]
+    excitatory = np.array(run.is_excitatory)[cells.type_index]
+    away = _offsets(run, pre, post)
+    distance = np.linalg.norm(away, axis=1)
+    out = []
+    for signs in ((True, True), (True, False), (False, True), (False, False)):
+        own = (excitatory[pre] == signs[0]) & (excitatory[post] == signs[1])
+        own &= pre != post
+        if not own.any():
+            continue
+        typical = max(1, round(float(edges["synapses_n"][own].mean())))
+        off = np.abs(distance - np.median(distance[own]))
+        own = np.flatnonzero(own & (edges["synapses_n"] == typical))
+        if not own.size:
+            continue
+        row = int(own[off[own].argmin()])
+        pair = _pair(run, shelf, int(pre[row]), int(post[row]))
+        if pair:
+            out.append(pair | {"distance_um": round(float(distance[row]), 1)})
+    return out
+
+
+def _offsets(run: RunTables, pre, post) -> np.ndarray:
+    """Vector from soma to soma, the shortest where the column wraps."""
+    away = run.cells.position_um[post] - run.cells.position_um[pre]
+    for axis, period in enumerate(run.wrap_um):
+        if period > 0:
+            away[:, axis] -= period * np.round(away[:, axis] / period)
+    return away
+
+
+def _synapses_of(run: RunTables, pre: int, post: int) -> dict[str, np.ndarray]:
+    names = ["pre_cell_id", "post_cell_id", "x_um", "y_um", "z_um", "delay_ms"]
+    names += ["axon_path_um", "dendrite_path_um"]
+    found: dict[str, list] = {name: [] for name in names}
+    for batch in run.batches("synapses", names):
+        own = (batch["pre_cell_id"] == pre) & (batch["post_cell_id"] == post)
+        for name in names:
+            found[name].append(batch[name][own])
+    return {name: np.concatenate(parts) for name, parts in found.items()}
+
+
+def _pair(run: RunTables, shelf: ArborShelf, pre: int, post: int) -> dict | None:
+    arbor, found = shelf.arbor(pre), _synapses_of(run, pre, post)
+    if arbor is None or shelf.arbor(post) is None:
+        return None
+    places = np.column_stack([found[f"{axis}_um"] for axis in "xyz"]).astype(float)
+    axon = placed(run, pre, arbor.end_um[arbor.kind == Kind.AXON])
+    shift = _image_shift(run, axon, places)
+    synapses = [
+        {
+            "at": np.round(place, 1).tolist(),
+            "axon_path_um": round(float(a), 1),
+            "dendrite_path_um": round(float(d), 1),
+            "delay_ms": round(float(delay), 2),
+        }
+        for place, a, d, delay in zip(
+            places,
+            found["axon_path_um"],
+            found["dendrite_path_um"],
+            found["delay_ms"],
+            strict=True,
+        )
+    ]
+    return {
+        "pre": drawn_cell(run, shelf, pre, shift),
+        "post": drawn_cell(run, shelf, post),
+        "synapses": synapses,
+    }
+
+
+def _image_shift(run: RunTables, axon_um, places_um) -> np.ndarray:
+    """Return the shift of the presynaptic cell that brings its axon to the synapses."""
+    x, y = run.wrap_um
+    if x <= 0 or not len(axon_um):
+        return np.zeros(3)
+    tree = cKDTree(axon_um)
+    shifts = [np.array([i * x, j * y, 0.0]) for i in (0, -1, 1) for j in (0, -1, 1)]
+    # The sum of roots lets most synapses decide when they came through several images.
+    miss = [np.sqrt(tree.query(places_um - shift)[0]).sum() for shift in shifts]
+    return shifts[int(np.argmin(miss))]
