@@ -1,4 +1,4 @@
-"""Arbors thinned to a few hundred points, and turned into their place in the circuit."""
+"""Arbors thinned to about a thousand points, and turned into their place in the circuit."""
 
 from __future__ import annotations
 
@@ -12,8 +12,8 @@ from circuitgen.morphology import Arbor, build_arbor, read_reconstruction
 from circuitgen.morphology.arbor import Kind
 from circuitgen.report.source import RunTables
 
-MOST_POINTS = 700
-_TOLERANCES_UM = (1.0, 2.0, 4.0, 8.0, 16.0)
+MOST_POINTS = 1200
+_TOLERANCES_UM = (1.0, 2.0, 4.0, 8.0)
 
 
 class ArborShelf:

@@ -58,27 +58,27 @@ def recording_plot(row: dict, end: float, tone: str, label: str) -> str:
         return f"{100 * min(value / end, 1):.2f}%"
 
     marks = [
-        f'<line class="grid" x1="{25 * s}%" x2="{25 * s}%" y1="0" y2="30"/>'
+        f'<line class="grid" x1="{25 * s}%" x2="{25 * s}%" y1="0" y2="36"/>'
         for s in range(5)
     ]
     low, high = row["p_measured_low"], row["p_measured_high"]
     if low is not None and high is not None:
         width = f"{100 * (min(high / end, 1) - low / end):.2f}%"
         marks.append(
-            f'<rect class="tint" x="{at(low)}" y="10" width="{width}" height="10"/>'
+            f'<rect class="tint" x="{at(low)}" y="7" width="{width}" height="10"/>'
         )
         marks += [
-            f'<line class="ink" x1="{at(v)}" x2="{at(v)}" y1="8" y2="22"/>'
+            f'<line class="ink" x1="{at(v)}" x2="{at(v)}" y1="5" y2="19"/>'
             for v in (low, high)
         ]
         marks.append(
-            f'<line class="ink" x1="{at(low)}" x2="{at(high)}" y1="15" y2="15"/>'
+            f'<line class="ink" x1="{at(low)}" x2="{at(high)}" y1="12" y2="12"/>'
         )
     if row["p_measured"] is not None:
-        marks.append(f'<circle class="ink" cx="{at(row["p_measured"])}" cy="15" r="4"/>')
+        marks.append(f'<circle class="ink" cx="{at(row["p_measured"])}" cy="12" r="4"/>')
     if row["p_realised"] is not None:
         marks.append(
-            f'<svg x="{at(row["p_realised"])}" y="15" overflow="visible">'
+            f'<svg x="{at(row["p_realised"])}" y="26" overflow="visible">'
             f'<path class="circuit {tone}" d="M0-7 7 0 0 7-7 0Z"/></svg>'
         )
     return f'<svg class="whisker" role="img" aria-label="{text(label)}">{"".join(marks)}</svg>'

@@ -88,10 +88,10 @@ def _verdict_counts(recordings: list[dict]) -> str:
         return "This run has no recordings."
     counts = {v: sum(row["verdict"] == v for row in recordings) for v in VERDICTS}
     kept = sum(row["use"] == "audit" for row in recordings)
-    said = ", ".join(f"{verdict}: {n}" for verdict, n in counts.items() if n)
+    said = ", ".join(f"“{verdict}” {n}" for verdict, n in counts.items() if n)
     return (
-        f"Of {len(recordings)} recordings, {said}."
-        f" {kept} of them were kept out of the fit."
+        f"Verdicts on the {len(recordings)} recordings: {said}."
+        f" Kept out of the fit: {kept}."
     )
 
 
@@ -172,8 +172,8 @@ def _recording_row(run: RunTables, row: dict, end: float) -> str:
         f'<td class="c-plot">{plot}</td>'
         f'<td class="c-measured">{_measured(row)}</td>'
         f'<td class="c-circuit"><b>{number(row["p_realised"])}</b></td>'
-        f'<td class="c-synapses"><small>measured</small> {measured}'
-        f" <small>circuit</small> {drawn}</td>"
+        f'<td class="c-synapses"><span><small>measured</small> {measured}</span> '
+        f"<span><small>circuit</small> {drawn}</span></td>"
         f'<td class="c-verdict v-{word.replace(" ", "-")}">'
         f'<span aria-hidden="true">{_MARKS[word]}</span> {word}</td></tr>'
     )

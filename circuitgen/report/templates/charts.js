@@ -60,7 +60,7 @@ function path(points) {
 }
 
 // Seven stops of the cividis map (Nunez, Anderton & Renslow 2018), dark to bright.
-const SHADES = [[0, 34, 78], [43, 68, 110], [87, 93, 109], [124, 123, 120], [165, 154, 112], [209, 186, 87], [253, 231, 55]];
+const SHADES = [[0, 34, 78], [42, 63, 109], [87, 93, 109], [125, 124, 120], [165, 156, 116], [210, 192, 96], [254, 232, 56]];
 
 function shade(part) {
   const at = Math.min(Math.max(part, 0), 1) * (SHADES.length - 1);

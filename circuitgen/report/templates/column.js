@@ -27,16 +27,17 @@
 
   function side() {
     const host = byId("column-side");
-    const width = Math.max(host.clientWidth, 260), labels = 64, foot = 24;
+    const room = Math.max(host.clientWidth, 260), labels = 64, foot = 24;
     const xs = DATA.somata.points.flatMap((p) => p.filter((_, i) => i % 2 === 0));
     const reach = cells ? DATA.shown_cells.flatMap((c) => c.lines.flatMap(([, p]) => p.filter((_, i) => i % 3 === 0))) : [];
     const deep = cells ? DATA.shown_cells.flatMap((c) => c.lines.flatMap(([, p]) => p.filter((_, i) => i % 3 === 2))) : [];
     const [left, right] = [Math.min(...xs, ...few(reach, Math.min)), Math.max(...xs, ...few(reach, Math.max))];
     const top = Math.min(0, ...few(deep.map((z) => thickness - z), Math.min));
     const bottom = Math.max(thickness, ...few(deep.map((z) => thickness - z), Math.max));
-    const scale = Math.min((width - labels - 12) / Math.max(right - left, 1), 760 / (bottom - top));
+    const scale = Math.min((room - labels - 12) / Math.max(right - left, 1), 760 / (bottom - top));
     const height = Math.ceil((bottom - top) * scale) + foot;
-    const start = labels + (width - labels - 12 - (right - left) * scale) / 2;
+    const width = Math.ceil(labels + 12 + (right - left) * scale);
+    const start = labels;
     const x = (v) => start + (v - left) * scale, y = (depth) => (depth - top) * scale + 4;
     const svg = draw("svg", { width, height, role: "img", "aria-label": byId("column-words").textContent });
     for (const layer of layers) {

@@ -55,14 +55,14 @@ const MATRIX = (function matrix() {
       g.append(draw("circle", { class: "dot", cx: side / 2, cy: side / 2, r: 1.2 }));
       return g;
     }
-    const strip = Math.max(3, Math.round(side * 0.22));
-    g.append(draw("rect", { x: 0.5, y: 0.5, width: side - 1, height: side - 1 - strip, fill: shade(part(row.p_connect)) }));
-    g.append(draw("rect", { class: "strip", x: 0.5, y: side - strip - 0.5, width: side - 1, height: strip }));
+    const edge = side < 20 ? 1.5 : 3, inner = side - 2 * edge, strip = Math.max(3, Math.round(inner * 0.27));
+    g.append(draw("rect", { class: "strip", x: 0.5, y: 0.5, width: side - 1, height: side - 1 }));
+    g.append(draw("rect", { x: edge, y: edge, width: inner, height: inner - strip, fill: shade(part(row.p_connect)) }));
     if (row.p_connect_low !== null && row.p_connect_high !== null) {
-      const wide = Math.max(1, (side - 2) * (row.p_connect_high - row.p_connect_low));
-      g.append(draw("rect", { class: "width-bar", x: 1, y: side - strip + 0.5, width: wide, height: Math.max(strip - 2, 1.5) }));
+      const wide = Math.max(1, inner * (row.p_connect_high - row.p_connect_low));
+      g.append(draw("rect", { class: "width-bar", x: edge, y: side - edge - strip + 1.5, width: wide, height: Math.max(strip - 1.5, 1.5) }));
     }
-    if (row.recorded) g.append(draw("rect", { class: "recorded", x: 1.5, y: 1.5, width: side - 3, height: side - 3 }));
+    if (row.recorded) g.append(draw("rect", { class: "recorded", x: 1, y: 1, width: side - 2, height: side - 2 }));
     return g;
   }
 
@@ -70,7 +70,7 @@ const MATRIX = (function matrix() {
     const host = byId("matrix");
     const room = Math.max(host.clientWidth, 260);
     const label = Math.min(Math.max(...TYPES.map((t) => textWidth(t.name))) + 8, room < 500 ? 96 : 150);
-    side = Math.max(13, Math.min(34, Math.floor((room - label - 4) / n)));
+    side = Math.max(13, Math.min(40, Math.floor((room - label - 4) / n)));
     const size = side * n;
     const svg = draw("svg", { width: label + size + 4, height: label + size + 4 });
     const grid = draw("g", { role: "grid", "aria-label": "Matrix of pathways, rows presynaptic, columns postsynaptic", transform: `translate(${label} ${label})` });

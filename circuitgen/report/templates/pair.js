@@ -84,8 +84,16 @@ const PAIR = (function pair() {
       const [x, y] = project(...one.at);
       pen.fillStyle = colour("brick"); pen.strokeStyle = colour("paper"); pen.lineWidth = 1.5;
       pen.beginPath(); pen.rect(x - 5, y - 5, 10, 10); pen.fill(); pen.stroke();
-      label(pen, String(i + 1), x + 9, y - 7, colour);
     });
+    p.synapses.forEach((one, i) => {
+      // Numbers stand to four sides in turn, so that near synapses stay legible.
+      const [x, y] = project(...one.at), [right, down] = [[9, -7], [-17, -7], [9, 16], [-17, 16]][i % 4];
+      label(pen, String(i + 1), x + right, y + down, colour);
+    });
+    const bar = roundSteps((width * 0.3) / scale, 1)[1];
+    pen.fillStyle = colour("ink");
+    pen.fillRect(12, height - 14, bar * scale, 2);
+    label(pen, `${number(bar)} µm`, 12, height - 20, colour);
   }
 
   function label(pen, text, x, y, colour) {

@@ -51,10 +51,12 @@ function showPathway(code, row) {
     ["appositions", "Appositions per touching pair", () => histogramRows("appositions", detail.appositions, 1)],
     ["delays", "Mean delay of a connection, drawn circuit", () => delayRows(detail.delays)],
   ];
+  const blocks = make("div", { class: "parts" });
+  panel.append(blocks);
   for (const [key, title, rows] of parts) {
     const block = make("figure", { "data-part": key }, [make("h4", {}, title), make("div", { class: "plot" }), make("figcaption")]);
     block.append(make("p", { class: "data" }, csvLink(`${key}-${code}`, rows)));
-    panel.append(block);
+    blocks.append(block);
   }
   drawPathway();
 }
@@ -103,7 +105,7 @@ function drawDistance(plot, caption, curve, tone, code) {
   const ends = curve.p.map((p, i) => [p, i]).filter(([p]) => p !== null);
   const [near, far] = [ends[0], ends[ends.length - 1]];
   caption.textContent = `Line: expected probability of all pairs, by bins of ${DATA.bin_um} µm, ${number(near[0])} near ${number(at(near[1]))} µm and ${number(far[0])} near ${number(at(far[1]))} µm; ${number(sum)} pairs.${band}${points.length ? ` Ink: ${points.length} recorded, with its window and 95 % interval (groups and lateral windows included).` : ""}`;
-  const area = chart(plot, { xTop, yTop: Math.max(...values.filter((v) => v !== null), 0.001), xWords: "distance (µm)", yWords: "probability", label: caption.textContent, height: 210 });
+  const area = chart(plot, { xTop, yTop: Math.max(...values.filter((v) => v !== null), 0.001), xWords: "distance (µm)", yWords: "probability", label: caption.textContent, height: 200 });
   const { svg, x, y } = area;
   const known = curve.p.map((p, i) => i).filter((i) => curve.p[i] !== null);
   if (curve.low) {
