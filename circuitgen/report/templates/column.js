@@ -88,7 +88,7 @@
   }
 
   function drawLane(host, i) {
-    const width = Math.max(host.clientWidth, 90), height = 190, foot = 18;
+    const width = Math.max(host.clientWidth, 90), height = 170, foot = 18;
     const most = Math.max(...built[i], ...wanted[i].map((v) => v ?? 0), 1e-9);
     const x = (v) => ((width - 4) * v) / most, y = (depth) => ((height - foot) * depth) / thickness;
     const total = wanted[i].some((v) => v !== null);

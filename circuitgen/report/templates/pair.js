@@ -103,12 +103,17 @@ const PAIR = (function pair() {
   }
 
   function somata(pen, p, project, scale, colour) {
-    for (const [one, word] of [[p.pre, "pre"], [p.post, "post"]]) {
-      const [x, y] = project(...one.soma);
+    // Words stand in the margin, with a line to their soma, clear of cables and synapses.
+    const places = [[p.pre, "pre"], [p.post, "post"]].map(([one, word]) => [one, word, ...project(...one.soma)]);
+    const crowded = Math.abs(places[0][3] - places[1][3]) < 18;
+    for (const [one, word, x, y] of places) {
+      const level = y + (crowded ? (one === p.pre ? 9 : -9) : 0);
+      pen.beginPath(); pen.moveTo(44, level); pen.lineTo(x, y);
+      pen.strokeStyle = colour("soft"); pen.lineWidth = 0.8; pen.stroke();
+      label(pen, word, 10, level + 4, colour);
       pen.beginPath(); pen.arc(x, y, Math.max(4, one.soma_radius_um * scale), 0, 7);
       pen.fillStyle = colour(signOf(one.type)); pen.strokeStyle = colour("ink"); pen.lineWidth = 1.5;
       pen.fill(); pen.stroke();
-      label(pen, word, x + 10, y + 16, colour);
     }
   }
 
