@@ -7,7 +7,12 @@ import sys
 from collections.abc import Sequence
 
 from circuitgen import __version__
-from circuitgen.commands import add_build_command, add_grow_command, add_new_command
+from circuitgen.commands import (
+    add_build_command,
+    add_grow_command,
+    add_new_command,
+    add_report_command,
+)
 from circuitgen.commands.arguments import BAD_INPUT, INTERRUPTED
 from circuitgen.core.errors import CircuitgenError
 
@@ -34,6 +39,7 @@ def make_parser() -> argparse.ArgumentParser:
         add_build_command,
         add_new_command,
         add_grow_command,
+        add_report_command,
     ):
         add_command(commands)
     return parser

@@ -105,7 +105,9 @@ class Browser:
                 return answer["result"]
             self.events.append(answer)
 
-    def open(self, path: Path, width: int = 1000, dark: bool = False, height=900) -> None:
+    def open(
+        self, path: Path, width: int = 1000, dark: bool = False, height=900
+    ) -> None:
         """Load a file at a width in pixels, light or dark, and wait until it is there."""
         self.events.clear()
         self.resize(width, height)

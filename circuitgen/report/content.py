@@ -26,7 +26,9 @@ MOST_DETAILED_PATHWAYS = 3600
 
 def _short(values) -> list:
     """Round to four digits; NaN becomes None."""
-    return [None if np.isnan(v) else float(f"{v:.4g}") for v in np.asarray(values, float)]
+    return [
+        None if np.isnan(v) else float(f"{v:.4g}") for v in np.asarray(values, float)
+    ]
 
 
 def _trimmed(counts: np.ndarray) -> list[int]:

@@ -159,7 +159,9 @@ def _recording_row(run: RunTables, row: dict, end: float) -> str:
         "verdict": (2, 0, 1, 3)[VERDICTS.index(row["verdict"])],
     }
     data = "".join(f' data-{key}="{text(value)}"' for key, value in order.items())
-    kept = ' <span class="kept">kept out of the fit</span>' if row["use"] == "audit" else ""
+    kept = (
+        ' <span class="kept">kept out of the fit</span>' if row["use"] == "audit" else ""
+    )
     drawn = number(row["synapses_mean_realised"])
     measured = number(row["synapses_mean_measured"])
     plot = recording_plot(row, end, _tone(run, row["pre_type"]), label)
@@ -167,7 +169,7 @@ def _recording_row(run: RunTables, row: dict, end: float) -> str:
     return (
         f'<tr{data}><td class="c-row">{row["row"]}</td>'
         f'<th scope="row" class="c-pathway"><span class="name">{text(row["pre_type"])}'
-        f' → {text(row["post_type"])}</span> <small>{text(_window(row))}'
+        f" → {text(row['post_type'])}</span> <small>{text(_window(row))}"
         f"{' · ' if row['source'] else ''}{text(row['source'])}{kept}</small></th>"
         f'<td class="c-plot">{plot}</td>'
         f'<td class="c-measured">{_measured(row)}</td>'

@@ -32,7 +32,8 @@ def verdict(connected_n: int | None, tested_n: int | None, p: float | None) -> s
 def judged(rows: list[dict]) -> list[dict]:
     """Return the rows of fit.csv, each with its verdict."""
     return [
-        row | {"verdict": verdict(row["connected_n"], row["tested_n"], row["p_realised"])}
+        row
+        | {"verdict": verdict(row["connected_n"], row["tested_n"], row["p_realised"])}
         for row in rows
     ]
 

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+from importlib.util import find_spec
 from pathlib import Path
 
+from circuitgen.core.errors import CircuitgenError
 from circuitgen.core.files import whole_file
 from circuitgen.report.content import gather
 from circuitgen.report.page import page
@@ -12,24 +14,40 @@ from circuitgen.report.source import RunTables
 REPORT = "report.html"
 
 
-def write_report(run_folder: Path) -> Path:
-    """Write ``report.html`` into a run folder, from its tables alone; return its path.
+def write_report(run_folder: Path, figures: Path | None = None) -> list[Path]:
+    """Write ``report.html`` into a run folder, from its tables alone.
 
-    Raises RunFolderError where the folder holds no finished run.
+    Parameters
+    ----------
+    run_folder : Path
+        A finished run.
+    figures : Path, optional
+        A folder for each figure as SVG and PNG; needs matplotlib.
+
+    Returns
+    -------
+    list of Path
+        The files written, the page first.
+
+    Raises
+    ------
+    RunFolderError
+        Where the folder holds no finished run.
+    CircuitgenError
+        Where figures are wanted and matplotlib is not installed; nothing is written.
     """
+    if figures is not None and find_spec("matplotlib") is None:
+        raise CircuitgenError(
+            "--figures needs matplotlib: pip install 'circuitgen[figures]'"
+        )
     run = RunTables(run_folder)
-    text = page(run, gather(run))
+    content = gather(run)
     path = run.path / REPORT
+    text = page(run, content)
     with whole_file(path) as partial:
         partial.write_text(text, encoding="utf-8")
-    return path
-
-
-def write_figures(run_folder: Path, out: Path) -> list[Path]:
-    """Write each figure as SVG and PNG into a folder; return the files.
-
-    Raises RunFolderError as `write_report`; ReportError without matplotlib.
-    """
+    if figures is None:
+        return [path]
     from circuitgen.report.figures import draw_figures
 
-    return draw_figures(gather(RunTables(run_folder)), Path(out))
+    return [path, *draw_figures(content, Path(figures))]

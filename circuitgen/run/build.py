@@ -14,6 +14,7 @@ from circuitgen.core.compilation import is_compiled
 from circuitgen.core.errors import InputError, Problem
 from circuitgen.core.progress import Progress
 from circuitgen.core.run_tables import FIT, PATHWAYS
+from circuitgen.report import write_report
 from circuitgen.run.circuit import Circuit, assemble, write_cells
 from circuitgen.run.folder import PROVENANCE, RunFolder
 from circuitgen.run.provenance import (
@@ -168,5 +169,7 @@ def build(
             _say("compiling kernels, once for this version: about 25 s in all")
         summary = _write_all(spec, folder, threads or os.cpu_count() or 1, watch)
         write_provenance(folder.unfinished / PROVENANCE, spec, inputs, watch, summary)
+        with Progress("writing the report", 1):
+            write_report(folder.unfinished)
         folder.finish()
     return Outcome(folder.path, summary, built=True)
