@@ -105,12 +105,10 @@ class Browser:
                 return answer["result"]
             self.events.append(answer)
 
-    def open(
-        self, path: Path, width: int = 1000, dark: bool = False, height=900
-    ) -> None:
-        """Load a file at a width in pixels, light or dark, and wait until it is there."""
+    def open(self, path: Path, width: int = 1000, dark: bool = False) -> None:
+        """Load a file at a width in pixels, light or dark; wait until it is there."""
         self.events.clear()
-        self.resize(width, height)
+        self.resize(width)
         scheme = {"name": "prefers-color-scheme", "value": "dark" if dark else "light"}
         self.call("Emulation.setEmulatedMedia", features=[scheme])
         self.call("Page.navigate", url=path.as_uri())
@@ -200,9 +198,8 @@ class Browser:
 
     def screenshot(self, path: Path) -> None:
         """Write the whole page as PNG."""
-        size = self.run(
-            "[document.documentElement.clientWidth, document.documentElement.scrollHeight]"
-        )
+        root = "document.documentElement"
+        size = self.run(f"[{root}.clientWidth, {root}.scrollHeight]")
         clip = {"x": 0, "y": 0, "width": size[0], "height": size[1], "scale": 1}
         data = self.call(
             "Page.captureScreenshot",

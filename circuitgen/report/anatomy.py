@@ -103,10 +103,9 @@ def shown_cells(run: RunTables, shelf: ArborShelf) -> list[dict]:
             sign = bool(run.is_excitatory[t])
             key = (sign, int(np.searchsorted(bounds, depth[t])) if sign else 0)
             best.setdefault(key, t)
-    chosen = sorted(
-        (t for (sign, _), t in best.items() if sign), key=lambda t: -counts[t]
-    )
-    chosen = [*chosen[:3], *(t for (sign, _), t in best.items() if not sign)]
+    # Types came in order of their number of cells, and so do the keys.
+    chosen = [t for (sign, _), t in best.items() if sign][:3]
+    chosen += [t for (sign, _), t in best.items() if not sign]
     middle = cells.position_um[:, :2].mean(axis=0)
     off = np.linalg.norm(cells.position_um[:, :2] - middle, axis=1)
     out = []

@@ -1,4 +1,4 @@
-"""Arbors thinned to about a thousand points, and turned into their place in the circuit."""
+"""Arbors thinned to about a thousand points, and put into their place."""
 
 from __future__ import annotations
 
@@ -28,7 +28,7 @@ class ArborShelf:
         self._arbors: dict[tuple[str, int], Arbor | None] = {}
 
     def arbor(self, cell: int) -> Arbor | None:
-        """Return the arbor of a cell; None where its file is gone, changed or unclear."""
+        """Return a cell's arbor; None where its file is gone, changed or unclear."""
         cells = self._run.cells
         key = (cells.morphology[cell], int(cells.type_index[cell]))
         if key not in self._arbors:

@@ -81,4 +81,5 @@ def recording_plot(row: dict, end: float, tone: str, label: str) -> str:
             f'<svg x="{at(row["p_realised"])}" y="26" overflow="visible">'
             f'<path class="circuit {tone}" d="M0-7 7 0 0 7-7 0Z"/></svg>'
         )
-    return f'<svg class="whisker" role="img" aria-label="{text(label)}">{"".join(marks)}</svg>'
+    head = f'<svg class="whisker" role="img" aria-label="{text(label)}">'
+    return f"{head}{''.join(marks)}</svg>"

@@ -39,7 +39,7 @@ def draw_figures(content: dict, folder: Path) -> list[Path]:
     drawings: dict[str, tuple[tuple[float, float], Callable]] = {
         "recordings": ((7.0, 1.0 + 0.24 * len(content["recordings"])), _recordings),
         "pathways": ((7.0, 6.4), _matrix),
-        "curves": ((7.0, 7.5), _curves),
+        "curves": ((7.0, 4.0), _curves),
         "column": ((4.5, 7.0), _column),
         "density": ((7.0, 4.5), _density),
         "degrees": ((7.0, 2.8), _degrees),
@@ -130,7 +130,7 @@ def _root_norm(p: np.ndarray):
 
 
 def _curves(figure, content: dict) -> bool:
-    """Draw the probability by distance of up to 20 recorded pathways."""
+    """Draw the probability by distance of every recorded pathway."""
     types, details = content["types"], content["details"]
     place = {kind["name"]: index for index, kind in enumerate(types)}
     chosen = []
@@ -141,8 +141,10 @@ def _curves(figure, content: dict) -> bool:
             chosen.append((row, curve))
     if not chosen:
         return False
-    plots = figure.subplots(5, 4, squeeze=False, sharex=True).ravel()
-    for axes, (row, curve) in zip(plots, chosen[:20], strict=False):
+    rows = -(-len(chosen) // 4)
+    figure.set_figheight(0.6 + 1.4 * rows)
+    plots = figure.subplots(rows, 4, squeeze=False, sharex=True).ravel()
+    for axes, (row, curve) in zip(plots, chosen, strict=False):
         tone = _colour(types[place[row["pre_type"]]])
         bins = curve["first"] + np.arange(len(curve["n"]))
         middle = (bins + 0.5) * content["bin_um"]
@@ -182,8 +184,9 @@ def _column(figure, content: dict) -> bool:
         _lines(axes, cell, thickness, (3, 4), _DENDRITE, 0.8)
     for layer in content["profile"]["layers"]:
         axes.axhline(layer["top"], color=_SOFT, lw=0.4)
-        axes.annotate(_short(layer["name"], 12), (0, (layer["top"] + layer["bottom"]) / 2),
-                      xycoords=("axes fraction", "data"), va="center")  # fmt: skip
+        place = (0.01, (layer["top"] + layer["bottom"]) / 2)
+        name = _short(layer["name"], 12)
+        axes.annotate(name, place, xycoords=("axes fraction", "data"), va="center")
     axes.autoscale_view()
     axes.set_aspect("equal")
     axes.invert_yaxis()
@@ -219,11 +222,8 @@ def _density(figure, content: dict) -> bool:
 
 def _degrees(figure, content: dict) -> bool:
     degrees = content["degrees"]
-    words = (
-        ("out", "partners that a cell reaches"),
-        ("in", "partners that reach a cell"),
-    )
-    for axes, (key, label) in zip(figure.subplots(1, 2), words, strict=True):
+    words = {"out": "partners that a cell reaches", "in": "partners that reach a cell"}
+    for axes, (key, label) in zip(figure.subplots(1, 2), words.items(), strict=True):
         excitatory, inhibitory = degrees[key]
         width = degrees["bin"]
         axes.bar(np.arange(len(excitatory)) * width, excitatory, width, align="edge",
@@ -250,7 +250,10 @@ def _depths(figure, content: dict) -> bool:
     shown = axes.imshow(counts, cmap="cividis", norm=norm, extent=extent)
     axes.set_xlabel("depth of the dendrite's soma (µm)")
     axes.set_ylabel("depth of the axon's soma (µm)")
-    figure.colorbar(shown, ax=axes, shrink=0.8, label="appositions")
+    bar = figure.colorbar(
+        shown, ax=axes, shrink=0.8, label="appositions", format=lambda v, _: f"{v:,.0f}"
+    )
+    bar.ax.minorticks_off()
     return True
 
 
