@@ -1,12 +1,10 @@
-"""The column from the side, and connected pairs in space."""
+"""The column from the side: somata, density by depth, whole cells."""
 
 from __future__ import annotations
 
 import numpy as np
-from scipy.spatial import cKDTree
 
-from circuitgen.morphology.arbor import Kind
-from circuitgen.report.drawing import ArborShelf, drawn_cell, placed
+from circuitgen.report.drawing import ArborShelf, drawn_cell
 from circuitgen.report.source import RunTables
 from circuitgen.report.totals import thickness_um
 
@@ -115,93 +113,3 @@ def shown_cells(run: RunTables, shelf: ArborShelf) -> list[dict]:
         if drawn:
             out.append(drawn)
     return out
-
-
-def shown_pairs(run: RunTables, shelf: ArborShelf) -> list[dict]:
-    """Return one typical connected pair of each class of signs, as it lies in space.
-
-    Typical: it has the class's mean number of synapses, rounded; of those pairs the
-    one whose soma distance is nearest to the class's median.
-    """
-    edges, cells = run.edges, run.cells
-    pre, post = edges["pre_cell_id"], edges["post_cell_id"]
-    excitatory = np.array(run.is_excitatory)[cells.type_index]
-    away = _offsets(run, pre, post)
-    distance = np.linalg.norm(away, axis=1)
-    out = []
-    for signs in ((True, True), (True, False), (False, True), (False, False)):
-        own = (excitatory[pre] == signs[0]) & (excitatory[post] == signs[1])
-        own &= pre != post
-        if not own.any():
-            continue
-        typical = max(1, round(float(edges["synapses_n"][own].mean())))
-        off = np.abs(distance - np.median(distance[own]))
-        own = np.flatnonzero(own & (edges["synapses_n"] == typical))
-        if not own.size:
-            continue
-        row = int(own[off[own].argmin()])
-        pair = _pair(run, shelf, int(pre[row]), int(post[row]))
-        if pair:
-            out.append(pair | {"distance_um": round(float(distance[row]), 1)})
-    return out
-
-
-def _offsets(run: RunTables, pre, post) -> np.ndarray:
-    """Vector from soma to soma, the shortest where the column wraps."""
-    away = run.cells.position_um[post] - run.cells.position_um[pre]
-    for axis, period in enumerate(run.wrap_um):
-        if period > 0:
-            away[:, axis] -= period * np.round(away[:, axis] / period)
-    return away
-
-
-def _synapses_of(run: RunTables, pre: int, post: int) -> dict[str, np.ndarray]:
-    names = ["pre_cell_id", "post_cell_id", "x_um", "y_um", "z_um", "delay_ms"]
-    names += ["axon_path_um", "dendrite_path_um"]
-    found: dict[str, list] = {name: [] for name in names}
-    for batch in run.batches("synapses", names):
-        own = (batch["pre_cell_id"] == pre) & (batch["post_cell_id"] == post)
-        for name in names:
-            found[name].append(batch[name][own])
-    return {name: np.concatenate(parts) for name, parts in found.items()}
-
-
-def _pair(run: RunTables, shelf: ArborShelf, pre: int, post: int) -> dict | None:
-    arbor, found = shelf.arbor(pre), _synapses_of(run, pre, post)
-    if arbor is None or shelf.arbor(post) is None:
-        return None
-    places = np.column_stack([found[f"{axis}_um"] for axis in "xyz"]).astype(float)
-    axon = placed(run, pre, arbor.end_um[arbor.kind == Kind.AXON])
-    shift = _image_shift(run, axon, places)
-    synapses = [
-        {
-            "at": np.round(place, 1).tolist(),
-            "axon_path_um": round(float(a), 1),
-            "dendrite_path_um": round(float(d), 1),
-            "delay_ms": round(float(delay), 2),
-        }
-        for place, a, d, delay in zip(
-            places,
-            found["axon_path_um"],
-            found["dendrite_path_um"],
-            found["delay_ms"],
-            strict=True,
-        )
-    ]
-    return {
-        "pre": drawn_cell(run, shelf, pre, shift),
-        "post": drawn_cell(run, shelf, post),
-        "synapses": synapses,
-    }
-
-
-def _image_shift(run: RunTables, axon_um, places_um) -> np.ndarray:
-    """Return the shift of the presynaptic cell that brings its axon to the synapses."""
-    x, y = run.wrap_um
-    if x <= 0 or not len(axon_um):
-        return np.zeros(3)
-    tree = cKDTree(axon_um)
-    shifts = [np.array([i * x, j * y, 0.0]) for i in (0, -1, 1) for j in (0, -1, 1)]
-    # The sum of roots lets most synapses decide when they came through several images.
-    miss = [np.sqrt(tree.query(places_um - shift)[0]).sum() for shift in shifts]
-    return shifts[int(np.argmin(miss))]

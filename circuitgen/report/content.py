@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from circuitgen.report.anatomy import profile, shown_cells, shown_pairs, somata
+from circuitgen.report.anatomy import profile, shown_cells, somata
 from circuitgen.report.drawing import ArborShelf
 from circuitgen.report.network import degrees, reciprocity
+from circuitgen.report.pairs import shown_pairs
 from circuitgen.report.recordings import judged
 from circuitgen.report.source import RunTables
 from circuitgen.report.totals import (

@@ -6,7 +6,7 @@
   let chosen = "all", cells = true;
 
   const picker = byId("column-picker");
-  const select = make("select", { id: "column-type" }, [make("option", { value: "all" }, "all types"), ...TYPES.map((t, i) => make("option", { value: i }, t.name))]);
+  const select = make("select", { id: "column-type" }, [make("option", { value: "all" }, "all types"), ...TYPES.map((t, i) => make("option", { value: i }, cut(t.name, 220)))]);
   select.addEventListener("change", () => { chosen = select.value; side(); });
   picker.append(make("label", {}, ["Show the somata of", select]));
   if (DATA.shown_cells.length) {

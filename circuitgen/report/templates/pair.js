@@ -14,7 +14,7 @@ const PAIR = (function pair() {
   let chosen = 0, view = home(), asked = false;
 
   const title = (p) => `${TYPES[p.pre.type].name} → ${TYPES[p.post.type].name}`;
-  const select = make("select", { id: "pair-choice" }, pairs.map((p, i) => make("option", { value: i }, title(p))));
+  const select = make("select", { id: "pair-choice" }, pairs.map((p, i) => make("option", { value: i }, `${cut(TYPES[p.pre.type].name, 120)} → ${cut(TYPES[p.post.type].name, 120)}`)));
   select.addEventListener("change", () => { chosen = Number(select.value); view = home(); tell(); render(); });
   const button = (text, change) => {
     const one = make("button", { type: "button" }, text);
@@ -90,7 +90,7 @@ const PAIR = (function pair() {
       const [x, y] = project(...one.at), [right, down] = [[9, -7], [-17, -7], [9, 16], [-17, 16]][i % 4];
       label(pen, String(i + 1), x + right, y + down, colour);
     });
-    const bar = roundSteps((width * 0.3) / scale, 1)[1];
+    const bar = roundSteps((width * 0.14) / scale, 1)[1];
     pen.fillStyle = colour("ink");
     pen.fillRect(12, height - 14, bar * scale, 2);
     label(pen, `${number(bar)} µm`, 12, height - 20, colour);
