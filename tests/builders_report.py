@@ -17,8 +17,8 @@ LONG = FOREIGN + "x" * (80 - len(FOREIGN))
 NAMES = {"pyramid": SCRIPT, "basket": QUOTES, "stellate": LONG}
 
 
-def hostile_run(folder: Path) -> Path:
-    """Build the small circuit under names of scripts, quotes and foreign letters."""
+def hostile_spec(folder: Path) -> Path:
+    """Write the small circuit's spec under names of scripts, quotes, foreign letters."""
     folder.mkdir(parents=True, exist_ok=True)
     shape = "{shape: cylinder, diameter_um: 140}"
     text = SPEC.format(column=shape, morphologies=ROOT / "morphologies")
@@ -37,7 +37,12 @@ def hostile_run(folder: Path) -> Path:
     table = "\n".join([head, *(",".join(row) for row in rows)]) + "\n"
     (folder / "recordings.csv").write_text(table, encoding="utf-8")
     (folder / "spec.yaml").write_text(text, encoding="utf-8")
-    return build(folder / "spec.yaml", folder / "run").folder
+    return folder / "spec.yaml"
+
+
+def hostile_run(folder: Path) -> Path:
+    """Build the small circuit under those names."""
+    return build(hostile_spec(folder), folder / "run").folder
 
 
 class Page(HTMLParser):

@@ -26,5 +26,7 @@ def not_negative(text: str) -> int:
 
 
 def say(text: str) -> None:
-    """Write a line to standard output."""
-    sys.stdout.write(f"{text}\n")
+    """Write a line to standard output, with escapes for letters that it lacks."""
+    encoding = sys.stdout.encoding or "utf-8"
+    known = text.encode(encoding, "backslashreplace").decode(encoding)
+    sys.stdout.write(f"{known}\n")

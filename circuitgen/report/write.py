@@ -9,6 +9,7 @@ from circuitgen.core.errors import CircuitgenError
 from circuitgen.core.files import whole_file
 from circuitgen.report.content import gather
 from circuitgen.report.page import page
+from circuitgen.report.recordings import judged, troubles
 from circuitgen.report.source import RunTables
 
 REPORT = "report.html"
@@ -51,3 +52,8 @@ def write_report(run_folder: Path, figures: Path | None = None) -> list[Path]:
     from circuitgen.report.figures import draw_figures
 
     return [path, *draw_figures(content, Path(figures))]
+
+
+def recording_troubles(run_folder: Path) -> list[str]:
+    """Say in plain words which recordings a finished run cannot or does not meet."""
+    return troubles(judged(RunTables(run_folder).recordings))

@@ -12,7 +12,7 @@ import numpy as np
 
 from circuitgen.core.compilation import is_compiled
 from circuitgen.core.errors import InputError, Problem
-from circuitgen.core.progress import Progress
+from circuitgen.core.progress import Progress, wrapped
 from circuitgen.core.run_tables import FIT, PATHWAYS
 from circuitgen.report import write_report
 from circuitgen.run.circuit import Circuit, assemble, write_cells
@@ -46,7 +46,7 @@ class Outcome:
 
 
 def _say(text: str) -> None:
-    sys.stderr.write(f"{text}\n")
+    sys.stderr.write(f"{wrapped(text)}\n")
 
 
 def _fit(circuit: Circuit, histograms: Histograms) -> WiringFit:
