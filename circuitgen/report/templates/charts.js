@@ -40,7 +40,7 @@ function bars(host, { counts, width = 1, offset = 0, whole = true, tone, xWords,
   const n = Math.max(counts.length, offset + 2);
   const shift = whole ? 0.5 : 0;
   const area = chart(host, {
-    xTop: (n - offset) * width, yTop: Math.max(...counts, 1), xWords, yWords, label, xTicks: [],
+    xTop: (n - offset) * width, yTop: Math.max(...counts, 4), xWords, yWords, label, xTicks: [],
   });
   const step = Math.max(1, Math.ceil((n - offset) / Math.max(3, (host.clientWidth - 60) / 44)));
   for (let i = offset; i < n; i += step) {

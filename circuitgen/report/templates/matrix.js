@@ -144,6 +144,7 @@ const MATRIX = (function matrix() {
   const first = (likely.length ? likely : known)[0];
   if (first) current = place.get(first.pre_type) * n + place.get(first.post_type);
   open = first ? current : null;
+  if (n > 20) byId("matrix-figure").parentElement.classList.add("many");
   figure(redraw);
   return { start() { mark(current); if (open !== null) choose(open); } };
 })();

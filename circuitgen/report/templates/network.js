@@ -7,7 +7,7 @@
     const [excitatory, inhibitory] = DATA.degrees[key];
     const n = Math.max(excitatory.length, inhibitory.length, 1);
     words.textContent = `Cells by number of partners, bins of ${bin}. Ochre: excitatory cells, mean ${meanDegree(key, true)}. Teal outline: inhibitory cells, mean ${meanDegree(key, false)}.`;
-    const area = chart(host, { xTop: n * bin, yTop: Math.max(...excitatory, ...inhibitory, 1), xWords: "partners", yWords: "cells", label: words.textContent, height: 200 });
+    const area = chart(host, { xTop: n * bin, yTop: Math.max(...excitatory, ...inhibitory, 4), xWords: "partners", yWords: "cells", label: words.textContent, height: 200 });
     excitatory.forEach((count, i) => {
       if (count) area.svg.append(draw("rect", { class: "exc", x: area.x(i * bin) + 1, width: area.x(bin) - area.x(0) - 2, y: area.y(count), height: area.y(0) - area.y(count) }));
     });

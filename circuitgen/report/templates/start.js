@@ -14,6 +14,10 @@ window.addEventListener("resize", () => {
   waiting = setTimeout(drawFigures, 120);
 });
 // Paper has its own width and light colours.
-window.addEventListener("beforeprint", drawFigures);
-window.addEventListener("afterprint", drawFigures);
+for (const [moment, paper] of [["beforeprint", true], ["afterprint", false]]) {
+  window.addEventListener(moment, () => {
+    document.documentElement.classList.toggle("for-paper", paper);
+    drawFigures();
+  });
+}
 window.matchMedia("(prefers-color-scheme: dark)").addEventListener("change", drawFigures);
