@@ -41,6 +41,8 @@ LOOK = """
   for (const part of document.querySelectorAll("figure > div, .plot")) {
     if (part.getBoundingClientRect().height < 15) out.push(`empty: ${part.id}`);
   }
+  const table = document.getElementById("reciprocity");
+  if (table.scrollWidth > table.parentElement.clientWidth) out.push("cut: table");
   const page = document.documentElement;
   if (page.scrollWidth > page.clientWidth) out.push("wider than the window");
   return out;

@@ -75,7 +75,7 @@
   }
 
   const shown = DATA.shown_cells.map((c) => `${TYPES[c.type].name} (cell ${c.cell_id})`).join(", ");
-  byId("column-words").textContent = `Somata at their depth, ${DATA.somata.step > 1 ? `every ${DATA.somata.step}th, ` : ""}excitatory as ochre dots, inhibitory as teal triangles. ${shown ? `Whole cells in place, axon plum, dendrites moss: ${shown}. Lines are simplified for drawing.` : "No whole cells are drawn: the reconstructions that the run was built from are gone, were changed, or share a name."}`;
+  byId("column-words").textContent = `Somata at their depth, ${DATA.somata.step > 1 ? `one in ${DATA.somata.step}, ` : ""}excitatory as ochre dots, inhibitory as teal triangles. ${shown ? `Whole cells in place, axon plum, dendrites moss: ${shown}. Lines are simplified for drawing.` : "No whole cells are drawn: the reconstructions that the run was built from are gone, were changed, or share a name."}`;
 
   function profiles() {
     const host = byId("profiles");
