@@ -15,7 +15,7 @@ import pytest
 from builders_report import LONG, NAMES, QUOTES, SCRIPT, Page, hostile_run
 from builders_run import ROOT, run_command
 
-from circuitgen.core.errors import CircuitgenError
+from circuitgen.core.errors import CircuitgenError, RunFolderError
 from circuitgen.report import write_report
 from circuitgen.report.elements import number
 
@@ -181,9 +181,8 @@ def test_a_folder_without_a_finished_run_is_refused(folder, tmp_path):
     run = tmp_path / "run"
     shutil.copytree(folder, run)
     (run / "fit.csv").unlink()
-    code, _, err = run_command("report", run)
-    assert code == 2
-    assert "lacks fit.csv" in err
+    with pytest.raises(RunFolderError, match="lacks fit.csv"):
+        write_report(run)
 
 
 def test_figures_are_written_in_two_kinds_with_the_same_bytes(
