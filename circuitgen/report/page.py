@@ -90,8 +90,7 @@ def _verdict_counts(recordings: list[dict]) -> str:
     kept = sum(row["use"] == "audit" for row in recordings)
     said = ", ".join(f"“{verdict}” {n}" for verdict, n in counts.items() if n)
     return (
-        f"Recordings: {len(recordings)}. Verdicts: {said}."
-        f" Kept out of the fit: {kept}."
+        f"Recordings: {len(recordings)}. Verdicts: {said}. Kept out of the fit: {kept}."
     )
 
 
