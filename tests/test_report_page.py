@@ -13,11 +13,12 @@ import numpy as np
 import pandas as pd
 import pytest
 from builders_report import LONG, NAMES, QUOTES, SCRIPT, Page, hostile_run
-from builders_run import ROOT, run_command
+from builders_run import RECORDINGS, ROOT, run_command, write_spec
 
 from circuitgen.core.errors import CircuitgenError, RunFolderError
 from circuitgen.report import write_report
 from circuitgen.report.elements import number
+from circuitgen.run import build
 
 MOST_BYTES = 8_000_000
 
@@ -170,6 +171,23 @@ def test_predicted_intervals_and_curves_are_used_where_a_run_has_them(folder, tm
         "low": [0.1, 0.05],
         "high": [0.3, 0.2],
     }
+
+
+def test_a_circuit_without_a_connection_has_its_page(tmp_path):
+    rows = RECORDINGS.splitlines()
+    recordings = f"{rows[0]}\na,pyramid,pyramid,120,0,0,100,soma,,,,fit\n"
+    spec = write_spec(tmp_path, recordings=recordings)
+    text = spec.read_text()
+    for many, few in (("{L23: 60}", "{L23: 3}"), ("{L23: 12, L4: 8}", "{L23: 1}")):
+        assert many in text
+        text = text.replace(many, few)
+    spec.write_text(text.replace("{L4: 40}", "{L4: 1}"))
+    run = build(spec, tmp_path / "run").folder
+    assert len(pd.read_parquet(run / "edges.parquet")) == 0
+    page = Page(run / "report.html")
+    assert page.data["shown_pairs"] == page.data["reciprocity"] == []
+    assert page.data["recordings"][0]["verdict"] == "agrees"
+    assert 'data-number="connections">0<' in page.raw
 
 
 def test_a_folder_without_a_finished_run_is_refused(folder, tmp_path):

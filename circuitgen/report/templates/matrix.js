@@ -135,7 +135,8 @@ const MATRIX = (function matrix() {
     const svg = draw("svg", { width, height: 38, role: "img", "aria-label": `Shade: probability 0 to ${number(top)}` });
     for (let i = 0; i < 48; i += 1) svg.append(draw("rect", { x: 10 + (bar * i) / 48, y: 4, width: bar / 48 + 0.6, height: 12, fill: shade((i + 0.5) / 48) }));
     for (const f of [0, 0.0625, 0.25, 0.5625, 1]) {
-      svg.append(draw("text", { x: 10 + bar * Math.sqrt(f), y: 31, "text-anchor": "middle" }, number(f * top, 2)));
+      const anchor = f === 0 ? "start" : f === 1 ? "end" : "middle";
+      svg.append(draw("text", { x: 10 + bar * Math.sqrt(f), y: 31, "text-anchor": anchor }, number(f * top, 2)));
     }
     host.replaceChildren(svg);
   }

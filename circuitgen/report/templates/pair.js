@@ -5,6 +5,7 @@ const PAIR = (function pair() {
   CSV.pair = () => [["pair", "pre_cell_id", "post_cell_id", "x_um", "y_um", "z_um", "axon_path_um", "dendrite_path_um", "delay_ms"], ...pairs.flatMap((p, i) => p.synapses.map((s) => [i + 1, p.pre.cell_id, p.post.cell_id, ...s.at, s.axon_path_um, s.dendrite_path_um, s.delay_ms]))];
   if (!pairs.length) {
     host.remove();
+    byId("pair-picker").remove();
     words.textContent = "Not drawn: the circuit has no connection, or the reconstructions that it was built from are gone, were changed, or share a name.";
     return { angles: () => null };
   }
