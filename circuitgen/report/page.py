@@ -224,9 +224,9 @@ def _cite(run: RunTables) -> str:
     )
     return (
         f"<p>Cite the run as:</p><blockquote>{text(cited)}</blockquote>"
-        "<p>To build the same tables again: save the spec below under its name, beside"
-        " the same recordings and reconstructions (provenance.json lists them with their"
-        " SHA-256), and run</p><pre>circuitgen build SPEC --out RUN</pre>"
+        "<p>To build the same tables again: save the spec shown under “What was built”"
+        " beside the same recordings and reconstructions (provenance.json lists them"
+        " with their SHA-256), and run</p><pre>circuitgen build SPEC --out RUN</pre>"
         f"<p>with Python {text(stored['python'])} and {text(libraries)}.</p>"
         "<details><summary>SHA-256 of the tables</summary>"
         f'<div class="scroll"><table class="plain">{hashes}</table></div></details>'

@@ -66,8 +66,19 @@ const MATRIX = (function matrix() {
     return g;
   }
 
+  // Room for the longest text, so that no text moves the cells under the pointer.
+  function holdRoom() {
+    const readout = byId("matrix-readout");
+    const longest = [...rows.keys()].map(words).reduce((a, b) => (b.length > a.length ? b : a), "");
+    readout.style.minHeight = "";
+    readout.textContent = longest;
+    readout.style.minHeight = `${Math.ceil(readout.getBoundingClientRect().height)}px`;
+    mark(current);
+  }
+
   function redraw() {
     const host = byId("matrix");
+    holdRoom();
     const room = Math.max(host.clientWidth, 260);
     const label = Math.min(Math.max(...TYPES.map((t) => textWidth(t.name))) + 8, room < 500 ? 96 : 150);
     side = Math.max(13, Math.min(40, Math.floor((room - label - 4) / n)));

@@ -86,10 +86,12 @@ const PAIR = (function pair() {
       pen.fillStyle = colour("brick"); pen.strokeStyle = colour("paper"); pen.lineWidth = 1.5;
       pen.beginPath(); pen.rect(x - 5, y - 5, 10, 10); pen.fill(); pen.stroke();
     });
-    p.synapses.forEach((one, i) => {
-      // Numbers stand to four sides in turn, so that near synapses stay legible.
-      const [x, y] = project(...one.at), [right, down] = [[9, -7], [-17, -7], [9, 16], [-17, 16]][i % 4];
-      label(pen, String(i + 1), x + right, y + down, colour);
+    // Numbers stand away from the middle of all synapses, so that near ones stay legible.
+    const places = p.synapses.map((one) => project(...one.at));
+    const centre = [0, 1].map((k) => places.reduce((sum, q) => sum + q[k], 0) / places.length);
+    places.forEach(([x, y], i) => {
+      const angle = places.length > 1 ? Math.atan2(y - centre[1], x - centre[0]) : -0.8;
+      label(pen, String(i + 1), x + 16 * Math.cos(angle) - 4, y + 16 * Math.sin(angle) + 5, colour);
     });
     const bar = roundSteps((width * 0.14) / scale, 1)[1];
     pen.fillStyle = colour("ink");
