@@ -89,10 +89,17 @@ const PAIR = (function pair() {
     // Numbers stand away from the middle of all synapses, so that near ones stay legible.
     const places = p.synapses.map((one) => project(...one.at));
     const centre = [0, 1].map((k) => places.reduce((sum, q) => sum + q[k], 0) / places.length);
+    const marks = []; // synapses that lie on each other here share their numbers
     places.forEach(([x, y], i) => {
-      const angle = places.length > 1 ? Math.atan2(y - centre[1], x - centre[0]) : -0.8;
-      label(pen, String(i + 1), x + 16 * Math.cos(angle) - 4, y + 16 * Math.sin(angle) + 5, colour);
+      const mark = marks.find((one) => Math.hypot(one.x - x, one.y - y) < 12);
+      if (mark) mark.text += `, ${i + 1}`;
+      else marks.push({ x, y, text: String(i + 1) });
     });
+    for (const { x, y, text } of marks) {
+      const angle = places.length > 1 ? Math.atan2(y - centre[1], x - centre[0]) : -0.8;
+      const left = Math.cos(angle) < 0 ? pen.measureText(text).width : 0;
+      label(pen, text, x + 12 * Math.cos(angle) - left, y + 16 * Math.sin(angle) + 5, colour);
+    }
     const bar = roundSteps((width * 0.14) / scale, 1)[1];
     pen.fillStyle = colour("ink");
     pen.fillRect(12, height - 14, bar * scale, 2);
