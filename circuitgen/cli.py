@@ -12,6 +12,7 @@ from circuitgen.commands import (
     add_grow_command,
     add_new_command,
     add_predict_command,
+    add_report_command,
 )
 from circuitgen.commands.arguments import BAD_INPUT, INTERRUPTED
 from circuitgen.core.errors import CircuitgenError
@@ -40,6 +41,7 @@ def make_parser() -> argparse.ArgumentParser:
         add_predict_command,
         add_new_command,
         add_grow_command,
+        add_report_command,
     ):
         add_command(commands)
     return parser

@@ -23,7 +23,7 @@ ROOMS = {
     "prediction": {"core", "spec", "column", "appositions", "wiring", "run"},
     "audit": {"core", "spec", "prediction"},
     "export": {"core", "spec"},
-    "report": {"core", "spec"},
+    "report": {"core", "spec", "morphology"},
 }
 EVERY_ROOM = {*ROOMS, "run", "commands"}
 ROOMS["run"] = {"core", "spec", "morphology", "column", "appositions", "wiring"}

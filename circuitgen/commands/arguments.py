@@ -38,5 +38,7 @@ def number(text: str) -> float:
 
 
 def say(text: str) -> None:
-    """Write a line to standard output."""
-    sys.stdout.write(f"{text}\n")
+    """Write a line to standard output, with escapes for letters that it lacks."""
+    encoding = sys.stdout.encoding or "utf-8"
+    known = text.encode(encoding, "backslashreplace").decode(encoding)
+    sys.stdout.write(f"{known}\n")

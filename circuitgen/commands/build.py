@@ -10,6 +10,7 @@ from circuitgen.commands.arguments import FINE, at_least_one, say
 
 # As many as the wiring room keeps (a test compares): importing it here is slow.
 _DRAWS_N = 400
+TROUBLES_SHOWN = 5
 
 
 def run_build(arguments: argparse.Namespace) -> int:
@@ -29,8 +30,22 @@ def run_build(arguments: argparse.Namespace) -> int:
     if not outcome.built:
         say(f"{outcome.folder} is finished already: same spec, inputs and version.")
     say(_summary_text(outcome.summary))
+    for line in _troubles(outcome.folder):
+        say(line)
     say(f"run folder: {outcome.folder}")
+    say(f"report:     {outcome.folder / 'report.html'}")
     return FINE
+
+
+def _troubles(folder: Path) -> list[str]:
+    """Return what the circuit does not meet, the first few in full, for 80 columns."""
+    from circuitgen.core.progress import wrapped
+    from circuitgen.report import recording_troubles
+
+    found = recording_troubles(folder)
+    lines = [wrapped(line) for line in found[:TROUBLES_SHOWN]]
+    hidden = len(found) - len(lines)
+    return lines + ([f"… and {hidden} more: see the report"] if hidden else [])
 
 
 def _summary_text(summary: dict[str, object]) -> str:

@@ -2,11 +2,28 @@
 
 from __future__ import annotations
 
+import shutil
 import sys
+import textwrap
 import time
 from types import TracebackType
 
 PLAIN_LINE_EVERY_S = 5.0
+LINE_WIDTH = 80
+
+
+def wrapped(text: str) -> str:
+    """Break a message at blanks into lines of 80 columns, the later ones indented.
+
+    Words longer than a line, such as paths, stay whole so that they can be copied.
+    """
+    return textwrap.fill(
+        text,
+        LINE_WIDTH - 1,
+        subsequent_indent="  ",
+        break_long_words=False,
+        break_on_hyphens=False,
+    )
 
 
 def _clock(seconds: float) -> str:
@@ -75,7 +92,8 @@ class Progress:
 
     def _write(self, text: str, *, last: bool) -> None:
         if self._terminal:
-            sys.stderr.write(f"\r\x1b[2K{text[:79]}" + ("\n" if last else ""))
+            room = shutil.get_terminal_size((LINE_WIDTH, 24)).columns - 1
+            sys.stderr.write(f"\r\x1b[2K{text[:room]}" + ("\n" if last else ""))
         else:
             sys.stderr.write(f"{text}\n")
         sys.stderr.flush()

@@ -12,8 +12,9 @@ import numpy as np
 import pyarrow.parquet as pq
 
 from circuitgen.core.compilation import is_compiled
-from circuitgen.core.progress import Progress
+from circuitgen.core.progress import Progress, wrapped
 from circuitgen.core.run_tables import CURVES, FIT, LAWS, PATHWAYS, WINDOWS
+from circuitgen.report import write_report
 from circuitgen.run.boutons import bouton_totals
 from circuitgen.run.circuit import Circuit, assemble, write_cells
 from circuitgen.run.folder import PROVENANCE, RunFolder
@@ -49,7 +50,7 @@ class Outcome:
 
 
 def _say(text: str) -> None:
-    sys.stderr.write(f"{text}\n")
+    sys.stderr.write(f"{wrapped(text)}\n")
 
 
 def _home_layers(circuit: Circuit) -> list[int]:
@@ -237,5 +238,7 @@ def build(
         write_provenance(
             folder.unfinished / PROVENANCE, spec, inputs, watch, summary, mark
         )
+        with Progress("writing the report", 1):
+            write_report(folder.unfinished)
         folder.finish()
     return Outcome(folder.path, summary, built=True)

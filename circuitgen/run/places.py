@@ -27,6 +27,8 @@ class Places:
 
 def _by_arbor(arbor_index: np.ndarray) -> Iterator[tuple[int, np.ndarray]]:
     """Yield each arbor with the rows that belong to it."""
+    if not arbor_index.size:
+        return
     order = np.argsort(arbor_index, kind="stable")
     arbors, begin = np.unique(arbor_index[order], return_index=True)
     for arbor, rows in zip(arbors, np.split(order, begin[1:]), strict=True):

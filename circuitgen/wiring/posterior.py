@@ -73,7 +73,7 @@ class Space:
 class Mode:
     """Mode at one set of spreads, and what is needed to draw about it.
 
-    `log_evidence` is Laplace's. `slope` J, `noise` R and `missing` y - g are those at the
+    `log_evidence` is Laplace's. `slope` J, `noise` R and `missing` y - g are at the
     mode, `place` (3 x units,); `target` holds the evidence as normal targets.
     """
 
