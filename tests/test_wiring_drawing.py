@@ -15,7 +15,8 @@ from oracles_wiring import chosen_sites, synapses_of_pair
 from scipy.stats import chisquare
 
 from circuitgen.core.draws import uniforms
-from circuitgen.wiring import Law, choose_sites, draw_synapses, drawing, tabulate
+from circuitgen.wiring import Law, Laws, choose_sites, drawing, tabulate
+from circuitgen.wiring import draw_synapses as draw_numbers
 from circuitgen.wiring.kernels import choose, draw_counts
 from circuitgen.wiring.law import NEVER, size_distribution
 
@@ -36,9 +37,19 @@ EXTREME = [
 ]
 
 
+def _laws(laws):
+    """Lay laws side by side, one draw."""
+    return Laws(*(np.array([[getattr(x, t) for x in laws]]) for t in ("t0", "t1", "t2")))
+
+
 def _tables(laws, most):
-    nothing = np.full(len(laws), np.nan)
-    return tabulate(laws, nothing, nothing, most)
+    return tabulate(_laws(laws), _laws(laws), most)
+
+
+def draw_synapses(seed, pre, post, a, pathway, tables):
+    """Draw pairs that no reciprocity couples."""
+    chance = tables.connects[pathway, a]
+    return draw_numbers(seed, pre, post, a, pathway, tables, chance)
 
 
 def _pairs(n, most, pathways, seed=5):
@@ -180,8 +191,8 @@ def test_count_kernel_equals_its_twin(compiled):
     uniform[200:300] = 0.0
     out = np.full(1500, -1, np.int32)
     run = draw_counts if compiled else _plain(draw_counts)
-    arrays = (tables.connects, tables.ways, tables.t1, tables.t2)
-    run(uniform, a, pathway, *arrays, out)
+    chance = tables.connects[pathway, a]
+    run(uniform, a, pathway, chance, tables.ways, tables.t1, tables.t2, out)
     by_hand = [
         synapses_of_pair(uniform[i], int(a[i]), laws[pathway[i]]) for i in range(1500)
     ]
@@ -204,19 +215,21 @@ def test_site_kernel_equals_its_twin(compiled):
         assert len(by_hand) == synapses[i]
 
 
-def test_tables_hold_the_laws_and_their_bounds():
+def test_tables_hold_the_laws_and_the_spread_of_their_draws():
     laws = LAWS[:2]
-    tables = tabulate(laws, np.array([-2.0, np.nan]), np.array([0.0, np.nan]), 6)
+    shifts = np.linspace(-1.0, 1.0, 101)
+    mean = _laws(laws)
+    draws = Laws(*(np.repeat(part, 101, axis=0) for part in (mean.t0, mean.t1, mean.t2)))
+    draws = Laws(draws.t0 + shifts[:, None], draws.t1, draws.t2)
+    tables = tabulate(mean, draws, 6)
     for row, law in enumerate(laws):
         for a in range(7):
             of_size = size_distribution(a, law)
             s = np.arange(a + 1)
             assert tables.connects[row, a] == pytest.approx(of_size[1:].sum(), rel=1e-12)
             assert tables.expected[row, a] == pytest.approx(of_size @ s, rel=1e-12)
-    for a in range(7):
-        low, high = (
-            size_distribution(a, Law(t0, laws[0].t1))[1:].sum() for t0 in (-2.0, 0.0)
-        )
-        assert tables.low[0, a] == pytest.approx(low, rel=1e-12)
-        assert tables.high[0, a] == pytest.approx(high, rel=1e-12)
-    assert np.isnan(tables.low[1, 1:]).all()
+            # P(connected) rises with t0: its 5 and 95 % points are those of t0.
+            for name, shift in (("low", -0.9), ("high", 0.9)):
+                moved = Law(law.t0 + shift, law.t1, law.t2)
+                wanted = size_distribution(a, moved)[1:].sum()
+                assert getattr(tables, name)[row, a] == pytest.approx(wanted, rel=1e-9)
