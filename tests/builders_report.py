@@ -28,7 +28,9 @@ def hostile_spec(folder: Path) -> Path:
     members = json.dumps([SCRIPT, LONG])
     text = text.replace("excitatory: [pyramid, stellate]", f"</table>: {members}")
     rows = []
-    for line in RECORDINGS.splitlines()[1:]:
+    # A recording that the circuit cannot but contradict.
+    contradicted = RECORDINGS.replace("stellate,30,20,", "stellate,30,1,")
+    for line in contradicted.splitlines()[1:]:
         source, pre, post, *rest = line.split(",")
         known = NAMES | {"excitatory": "</table>"}
         words = [f"</script>{source}", known[pre], known[post]]

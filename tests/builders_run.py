@@ -64,15 +64,17 @@ def build_small(folder: Path, column: str = OPEN, **options) -> Path:
     return build(write_spec(folder, column), folder / "run", **options).folder
 
 
-def start_command(*words: object, **options) -> subprocess.Popen:
-    """Start the command line as a user would, in a process of its own."""
+def start_command(*words: object, **variables: str) -> subprocess.Popen:
+    """Start the command line as a user would, in a process of its own.
+
+    `variables` are added to the environment.
+    """
     return subprocess.Popen(
         [sys.executable, "-m", "circuitgen.cli", *map(str, words)],
         stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
         text=True,
-        env={**os.environ, "PYTHONPATH": str(ROOT)},
-        **options,
+        env={**os.environ, "PYTHONPATH": str(ROOT), **variables},
     )
 
 

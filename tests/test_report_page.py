@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import csv
 import json
 import re
 import shutil
@@ -133,44 +132,6 @@ def test_lost_or_changed_reconstructions_leave_their_figures_out(folder, tmp_pat
     (moved / "provenance.json").write_text(text)
     write_report(moved)
     assert Page(moved / "report.html").data["shown_cells"] == []
-
-
-def test_predicted_intervals_and_curves_are_used_where_a_run_has_them(folder, tmp_path):
-    run = tmp_path / "run"
-    shutil.copytree(folder, run)
-    pathways = pd.read_csv(run / "pathways.csv")
-    for name in ("p_connect", "synapses_mean"):
-        pathways[f"{name}_low_50"] = 0.25
-        pathways[f"{name}_high_50"] = 0.5
-    with (run / "pathways.csv").open("w", newline="") as stream:
-        stream.write(pathways.to_csv(index=False, quoting=csv.QUOTE_NONNUMERIC))
-    first = pathways.iloc[0]
-    curves = pd.DataFrame(
-        {
-            "pre_type": first.pre_type,
-            "post_type": first.post_type,
-            "distance_low_um": [25.0, 50.0],
-            "distance_high_um": [50.0, 75.0],
-            "pairs_n": [3, 4],
-            "p_connect_low": [0.1, 0.05],
-            "p_connect": [0.2, 0.1],
-            "p_connect_high": [0.3, 0.2],
-        }
-    )
-    curves.to_csv(run / "curves.csv", index=False)
-    write_report(run)
-    data = Page(run / "report.html").data
-    assert data["interval_percent"] == 90
-    assert data["pathways"][0]["p_connect_high_50"] == 0.5
-    names = [kind["name"] for kind in data["types"]]
-    code = names.index(first.pre_type) * len(names) + names.index(first.post_type)
-    assert data["details"][str(code)]["curve"] == {
-        "first": 1,
-        "n": [3, 4],
-        "p": [0.2, 0.1],
-        "low": [0.1, 0.05],
-        "high": [0.3, 0.2],
-    }
 
 
 def test_a_circuit_without_a_connection_has_its_page(tmp_path):

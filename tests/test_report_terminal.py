@@ -42,7 +42,7 @@ def test_a_log_has_plain_lines_of_80_columns(spec):
     assert max(map(len, lines)) <= 80
     assert "\x1b" not in done.stdout + done.stderr
     assert "\r" not in done.stderr
-    assert "too high for 20 connected of 30" in " ".join(done.stdout.split())
+    assert "too high for 1 connected of 30" in " ".join(done.stdout.split())
     assert done.stdout.endswith("run folder: run\nreport:     run/report.html\n")
 
 

@@ -11,7 +11,7 @@ from scipy.stats import binom
 from circuitgen.report.content import gather
 from circuitgen.report.recordings import troubles, verdict
 from circuitgen.report.source import RunTables
-from circuitgen.report.totals import BIN_UM, pair_totals, pairs_by_distance
+from circuitgen.report.totals import BIN_UM, pair_totals
 
 
 @pytest.fixture(scope="module", params=[OPEN, WRAP], ids=["open", "wrap"])
@@ -35,50 +35,19 @@ def tables(run):
     return cells, pairs
 
 
-def soma_distances(run, cells):
-    """All distances, the shortest image where the column wraps."""
-    xyz = cells[["x_um", "y_um", "z_um"]].to_numpy()
-    away = xyz[:, None] - xyz[None]
-    for axis, period in enumerate(run.wrap_um):
-        if period:
-            away[..., axis] -= period * np.round(away[..., axis] / period)
-    return np.linalg.norm(away, axis=2)
-
-
-def test_pairs_by_distance_count_every_ordered_pair(run, tables):
-    cells, _ = tables
-    distance = soma_distances(run, cells)
-    np.fill_diagonal(distance, np.inf)
-    counted = pairs_by_distance(run)
-    types = cells.cell_type.astype(str).to_numpy()
+def test_curves_are_those_of_the_table(run, content):
+    stored = pd.read_csv(run.path / "curves.csv").set_index(["pre_type", "post_type"])
     n = len(run.type_names)
-    for code in range(n * n):
-        pre = types == run.type_names[code // n]
-        post = types == run.type_names[code % n]
-        own = distance[np.ix_(pre, post)]
-        own = own[np.isfinite(own)] // BIN_UM
-        expected = np.bincount(own.astype(int), minlength=counted.shape[1])
-        assert counted[code].tolist() == expected.tolist()
-
-
-def test_curves_are_expected_shares_of_all_pairs(run, tables, content):
-    cells, pairs = tables
-    n = len(run.type_names)
-    all_pairs = pairs_by_distance(run)
+    assert content["details"]
     for code, detail in content["details"].items():
         names = run.type_names[int(code) // n], run.type_names[int(code) % n]
-        own = pairs[(pairs.pre_type == names[0]) & (pairs.post_type == names[1])]
-        bins = (own.soma_distance_um // BIN_UM).astype(int)
-        curve = detail["curve"]
-        for i, p in enumerate(curve["p"]):
-            place = curve["first"] + i
-            pairs_n = all_pairs[int(code), place]
-            assert curve["n"][i] == pairs_n
-            if pairs_n:  # four digits are kept
-                expected = own.p_connect[bins == place].sum() / pairs_n
-                assert p == pytest.approx(expected, rel=1e-3, abs=1e-12)
-        known = own.p_connect_low.notna().all()
-        assert ("low" in curve) == known
+        own, curve = stored.loc[[names]], detail["curve"]
+        assert curve["first"] * BIN_UM == own.distance_low_um.iloc[0]
+        assert curve["n"] == own.pairs_n.tolist()
+        for name, column in (("p", ""), ("low", "_low"), ("high", "_high")):
+            shown = np.array(curve[name], float)
+            # Four digits are kept.
+            np.testing.assert_allclose(shown, own[f"p_connect{column}"], rtol=1e-3)
 
 
 def test_histograms_count_pairs_and_connections(run, tables, content):
@@ -188,4 +157,3 @@ def test_sums_do_not_depend_on_the_parts(run, monkeypatch):
     parts = pair_totals(run)
     assert (whole.appositions == parts.appositions).all()
     assert (whole.by_depth == parts.by_depth).all()
-    np.testing.assert_allclose(whole.expected, parts.expected, rtol=1e-12)

@@ -11,7 +11,7 @@ import pandas as pd
 import pytest
 from builders_run import RECORDINGS, build_small, run_command, start_command, write_spec
 
-from circuitgen.core.errors import InputError, RunFolderError
+from circuitgen.core.errors import RunFolderError
 from circuitgen.run import build
 from circuitgen.run import sites as sites_module
 
@@ -28,6 +28,17 @@ def reference(tmp_path_factory):
 @pytest.mark.parametrize("threads", [2, 3])
 def test_threads_change_nothing(tmp_path, reference, threads):
     assert hashes(build_small(tmp_path, threads=threads)) == reference
+
+
+@pytest.mark.parametrize("cores", [1, 2])
+def test_cores_of_the_linear_algebra_change_nothing(tmp_path, reference, cores):
+    process = start_command(
+        "build", write_spec(tmp_path), "--out", tmp_path / "run",
+        OPENBLAS_NUM_THREADS=str(cores), NUMBA_NUM_THREADS=str(cores),
+    )  # fmt: skip
+    _, err = process.communicate(timeout=300)
+    assert process.returncode == 0, err
+    assert hashes(tmp_path / "run") == reference
 
 
 def test_blocks_change_no_row(tmp_path, monkeypatch):
@@ -85,12 +96,30 @@ def test_a_folder_that_is_no_run_is_refused(tmp_path):
     assert (tmp_path / "run" / "thesis.txt").read_text() == "years of work"
 
 
-def test_no_usable_recording_is_an_error(tmp_path):
+def test_without_a_usable_recording_the_prior_is_drawn_and_said(tmp_path):
     rows = RECORDINGS.splitlines()
     only_audit = "\n".join([rows[0], rows[-1]]) + "\n"
-    with pytest.raises(InputError, match="at least one is needed"):
-        build(write_spec(tmp_path, recordings=only_audit), tmp_path / "run")
-    assert not (tmp_path / "run").exists()
+    outcome = build(write_spec(tmp_path, recordings=only_audit), tmp_path / "run")
+    assert any("no recording enters" in text for text in outcome.summary["warnings"])
+    pathways = pd.read_csv(outcome.folder / "pathways.csv")
+    assert not pathways.recorded.any()
+    # Hardly anything is known: most 90 % intervals span half of what touches.
+    width = (pathways.p_connect_high - pathways.p_connect_low) / pathways.p_ceiling
+    assert width.median() > 0.5
+
+
+def test_a_posterior_draw_is_a_run_of_its_own(tmp_path, reference):
+    spec = write_spec(tmp_path)
+    third = build(spec, tmp_path / "third", draw=3).folder
+    again = build(spec, tmp_path / "again", draw=3, threads=1).folder
+    assert hashes(third) == hashes(again)
+    other = hashes(third)
+    same = {"cells.parquet", "windows.parquet", "curves.csv"}
+    assert {name for name in other if other[name] == reference[name]} == same
+    laws = pd.read_parquet(third / "laws.parquet").set_index("draw")
+    assert (laws.loc[0].t0.to_numpy() == laws.loc[3].t0.to_numpy()).all()
+    with pytest.raises(RunFolderError, match="another spec, input or version"):
+        build(spec, third, draw=4)
 
 
 def test_two_builds_at_once(tmp_path):

@@ -12,8 +12,9 @@ import pytest
 from builders_run import OPEN, ROOT, WRAP, build_small
 
 from circuitgen.core.files import sha256_of
-from circuitgen.core.run_tables import ALL_TABLES, EDGES_TEXT, FIT, PATHWAYS
-from circuitgen.wiring import wilson_interval
+from circuitgen.core.run_tables import ALL_TABLES, CURVES, EDGES_TEXT, FIT, PATHWAYS
+from circuitgen.wiring import Law, wilson_interval
+from circuitgen.wiring.law import size_distribution
 
 
 @pytest.fixture(scope="module", params=[OPEN, WRAP], ids=["open", "wrap"])
@@ -23,7 +24,10 @@ def run(request, tmp_path_factory):
         name: pd.read_parquet(folder / f"{name}.parquet")
         for name in ("cells", "pairs", "edges", "synapses")
     }
-    tables |= {name: pd.read_csv(folder / f"{name}.csv") for name in ("pathways", "fit")}
+    tables |= {
+        name: pd.read_csv(folder / f"{name}.csv")
+        for name in ("pathways", "curves", "fit")
+    }
     tables["folder"] = folder
     tables["period"] = (
         np.array([160.0, 130.0, np.inf]) if request.param == WRAP else None
@@ -43,7 +47,7 @@ def apart(run, pre, post):
 
 def test_tables_equal_their_declarations(run):
     for table in ALL_TABLES:
-        if table in (PATHWAYS, FIT, EDGES_TEXT):
+        if table in (PATHWAYS, CURVES, FIT, EDGES_TEXT):
             continue
         path = run["folder"] / f"{table.name}.parquet"
         parts = sorted(path.iterdir()) if path.is_dir() else [path]
@@ -54,7 +58,8 @@ def test_tables_equal_their_declarations(run):
         pd.testing.assert_frame_equal(frame, expected)
         for column in table.columns:
             assert column.nullable or stored[column.name].null_count == 0
-    for table, frame in ((PATHWAYS, run["pathways"]), (FIT, run["fit"])):
+    for table, name in ((PATHWAYS, "pathways"), (CURVES, "curves"), (FIT, "fit")):
+        frame = run[name]
         assert list(frame.columns) == [column.name for column in table.columns]
         assert len(frame) > 0
 
@@ -171,11 +176,11 @@ def test_pathways_count_pairs(run):
         same = sizes[row.pre_type] if row.pre_type == row.post_type else 0
         assert row.pairs_n == sizes[row.pre_type] * sizes[row.post_type] - same
         assert row.touching_pairs_n == touching.loc[row.pre_type, row.post_type]
-        if row.recorded:
-            assert row.p_connect_low <= row.p_connect <= row.p_connect_high
-        else:
-            assert np.isnan(row.p_connect_low)
-        assert row.p_connect <= row.p_ceiling
+        points = [row.p_connect_low, row.p_connect_low_50, row.p_connect]
+        points += [row.p_connect_high_50, row.p_connect_high, row.p_ceiling + 1e-12]
+        assert points == sorted(points)
+        assert row.p_drawn <= row.p_ceiling + 1e-12
+        assert 1 <= row.synapses_mean_low <= row.synapses_mean <= row.synapses_mean_high
 
 
 def _in_window(run, row):
@@ -202,7 +207,7 @@ def test_recordings_are_met_over_the_pairs_they_sample(run):
     chances = run["pairs"].set_index(["pre_cell_id", "post_cell_id"]).p_connect
     for row in run["fit"].itertuples():
         pairs = list(zip(*_in_window(run, row), strict=True))
-        assert row.pairs_in_window_n == len(pairs)
+        assert row.pairs_in_window == len(pairs)
         p = chances.reindex(pairs).fillna(0.0).to_numpy(float)
         assert row.p_fitted == pytest.approx(p.mean(), abs=1e-5)
         realised = np.mean([pair in joined for pair in pairs])
@@ -223,10 +228,48 @@ def test_provenance_hashes_the_tables(run):
     stored = json.loads((run["folder"] / "provenance.json").read_text())
     assert set(stored["tables_sha256"]) == {
         "cells.parquet", "pairs.parquet", "edges.parquet", "edges.csv",
-        "synapses.parquet", "pathways.csv", "fit.csv",
+        "synapses.parquet", "pathways.csv", "curves.csv", "fit.csv", "laws.parquet",
+        "windows.parquet",
     }  # fmt: skip
     for name, value in stored["tables_sha256"].items():
         assert sha256_of(run["folder"] / name) == value
     assert stored["summary"]["connections"] == len(run["edges"])
     assert stored["summary"]["synapses"] == len(run["synapses"])
     assert stored["summary"]["appositions"] == run["pairs"].appositions_n.sum()
+
+
+def test_curves_hold_the_pairs_of_their_bins(run):
+    """Counts by brute force; medians within the touching share; laws stored by draw."""
+    types = run["cells"].cell_type.astype(str).to_numpy()
+    pre, post = (side.ravel() for side in np.indices((len(types), len(types))))
+    pre, post = pre[pre != post], post[pre != post]
+    distance = np.linalg.norm(apart(run, pre, post), axis=1)
+    for row in run["curves"].itertuples():
+        mine = (types[pre] == row.pre_type) & (types[post] == row.post_type)
+        low = row.distance_low_um if row.distance_low_um > 0 else -1.0
+        inside = mine & (distance > low) & (distance <= row.distance_high_um)
+        assert row.pairs_n == inside.sum()
+        if row.pairs_n:
+            assert row.p_connect_low <= row.p_connect <= row.p_connect_high
+            assert row.p_connect_high <= row.p_ceiling + 1e-12
+
+
+def test_windows_and_laws_give_the_fitted_values_again(run):
+    """What predictions read from the folder is what the build used."""
+    windows = pd.read_parquet(run["folder"] / "windows.parquet")
+    laws = pd.read_parquet(run["folder"] / "laws.parquet")
+    assert laws.draw.nunique() == 401
+    drawn = laws[laws.draw == 0].set_index(["pre_type", "post_type"])
+    for row in run["fit"].itertuples():
+        own = windows[windows.recording_row == row.row]
+        assert own.pairs.sum() == pytest.approx(row.pairs_in_window)
+        law = drawn.loc[pd.MultiIndex.from_frame(own[["pre_type", "post_type"]])]
+        t0, t1, t2 = (law[name].to_numpy() for name in ("t0", "t1", "t2"))
+        p = [
+            1 - size_distribution(int(a), Law(*exponents))[0]
+            for a, exponents in zip(
+                own.appositions_n, zip(t0, t1, t2, strict=True), strict=True
+            )
+        ]
+        expected = np.average(p, weights=own.pairs)
+        assert row.p_fitted == pytest.approx(expected, rel=1e-9)

@@ -10,6 +10,7 @@ from pathlib import Path
 
 from circuitgen.commands.arguments import FINE, number, say
 from circuitgen.core.errors import InputError, Problem
+from circuitgen.core.progress import wrapped
 
 _ROWS_SHOWN = 40
 
@@ -133,8 +134,8 @@ def _all_pathways(tables, arguments) -> int:
     lines = _pathway_lines(rows[:_ROWS_SHOWN], known)
     if len(rows) > _ROWS_SHOWN:
         lines.append(f"... and {len(rows) - _ROWS_SHOWN} more: --csv FILE has all")
-    lines.append(f"p: each pathway {where}. * recorded. Least known first.")
-    lines += tables.provenance["summary"]["warnings"]
+    lines.append(wrapped(f"* recorded. p: each pathway {where}. Least known first."))
+    lines += map(wrapped, tables.provenance["summary"]["warnings"])
     return _emit(arguments, {"pathways": rows, "window": where}, rows, lines)
 
 
@@ -224,12 +225,12 @@ def _leave_one_out(tables, arguments) -> int:
 
     found = leave_one_out(tables)
     lines = [
-        f"{'row':>4}  {'pathway':<38}{'measured':>9}  {'the others say':<20}surprise"
+        f"{'row':>4}  {'pathway':<36}{'measured':>8}  {'the others say':<20}surprise"
     ]
     for row in found["rows"]:
         name = f"{row['pre_type']} > {row['post_type']}"
         lines.append(
-            f"{row['row']:>4}  {name[:37]:<38}{row['p_measured']:>8.3f} "
+            f"{row['row']:>4}  {name[:35]:<36}{row['p_measured']:>7.3f} "
             f"{_share(row['p_predicted'])} {row['surprise_p']:.3f}"
         )
     if "gain" in found:
@@ -241,14 +242,8 @@ def _leave_one_out(tables, arguments) -> int:
         ]
         plain = found["log_score_plain"].items()
         lines += [f"  {name:<36}{value:.3f}" for name, value in plain]
-    lines += ["", *_wrapped(found["sentence"])]
+    lines += ["", wrapped(found["sentence"])]
     return _emit(arguments, found, found["rows"], lines)
-
-
-def _wrapped(text: str) -> list[str]:
-    import textwrap
-
-    return textwrap.wrap(text, 79)
 
 
 def add_predict_command(commands) -> None:

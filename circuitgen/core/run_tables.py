@@ -158,7 +158,7 @@ WINDOWS = Table(
     "windows",
     "window, pathway and kind of pair",
     (
-        Column("recording_row", "int32", "recording; null for all pairs", True),
+        Column("recording_row", "int32", "row of the recording; 0: all pairs"),
         _PRE_TYPE,
         _POST_TYPE,
         Column("appositions_n", "int32", "appositions of the pair"),

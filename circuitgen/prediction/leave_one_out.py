@@ -54,16 +54,15 @@ def _windows(tables: RunTables) -> tuple[list[Window], dict]:
     """Return every recording with its pairs, and the histograms of all pairs."""
     stored = pq.read_table(tables.folder / "windows.parquet").to_pandas()
     index = {name: place for place, name in enumerate(tables.type_names)}
-    stored["number"] = stored.recording_row.fillna(-1).astype(int)
     by_row: dict[int, dict] = {}
-    keys = ["number", "pre_type", "post_type"]
+    keys = ["recording_row", "pre_type", "post_type"]
     for (number, pre, post), rows in stored.groupby(keys, observed=True):
         by_row.setdefault(number, {})[index[pre], index[post]] = _dense(rows)
     windows = [
         Window(recording, by_row.get(recording.row, {}))
         for recording in _recordings(tables)
     ]
-    return windows, by_row.get(-1, {})
+    return windows, by_row.get(0, {})
 
 
 def _types(tables: RunTables) -> tuple[list[bool], list[int]]:
@@ -182,9 +181,10 @@ def _conclude(rows: list[dict]) -> dict:
     false_share = false_discovery_control([row["surprise_p"] for row in rows])
     for row, share in zip(rows, false_share, strict=True):
         row["false_share"] = float(share)
+    rows = sorted(rows, key=lambda row: row["surprise_p"])
     disagree = [row["row"] for row in rows if row["false_share"] < FALSE_SHARE]
     return {
-        "rows": sorted(rows, key=lambda row: row["surprise_p"]),
+        "rows": rows,
         "recordings_n": len(rows),
         "coverage_90": inside / len(rows),
         "coverage_50": float(((place > 0.25) & (place < 0.75)).mean()),

@@ -17,14 +17,14 @@ from circuitgen.wiring import Laws
 
 
 class RunTables:
-    """The tables of one finished run; pathways are numbered in the order of its types.
+    """The tables of one finished run; pathways are numbered as its spec orders types.
 
     Attributes
     ----------
     folder : Path
     provenance : dict
     type_names : list of str
-        In order of the names; pathway = pre type x number of types + post type.
+        In the order of the spec; pathway = pre type x number of types + post type.
     cells : Cells
         In place; layers and reconstructions are left at 0.
     wrap_um : (float, float)
@@ -57,7 +57,7 @@ class RunTables:
     def _read_laws(self) -> tuple[Laws, Laws]:
         table = pq.read_table(self.folder / "laws.parquet").to_pandas()
         first = table[table.draw == 0]
-        self.type_names = sorted(first.pre_type.astype(str).unique())
+        self.type_names = first.pre_type.astype(str).unique().tolist()
         shape = (-1, len(first))
         exponents = [
             table[name].to_numpy().reshape(shape) for name in ("t0", "t1", "t2")

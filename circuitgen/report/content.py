@@ -17,7 +17,6 @@ from circuitgen.report.totals import (
     PairTotals,
     connection_totals,
     pair_totals,
-    pairs_by_distance,
     thickness_um,
 )
 
@@ -37,24 +36,7 @@ def _trimmed(counts: np.ndarray) -> list[int]:
     return counts[: some[-1] + 1].tolist() if some.size else []
 
 
-def _fallback_curve(totals: PairTotals, pairs_n: np.ndarray, code: int) -> dict:
-    """Return a pathway's probability by distance from its pairs."""
-    some = np.flatnonzero(pairs_n[code])
-    if not some.size or not totals.appositions[code].any():
-        return {}
-    own = slice(some[0], some[-1] + 1)
-    n = pairs_n[code, own]
-    with np.errstate(invalid="ignore", divide="ignore"):
-        p = totals.expected[code, own] / n
-        low = totals.expected_low[code, own] / n
-        high = totals.expected_high[code, own] / n
-    curve = {"first": int(some[0]), "n": n.tolist(), "p": _short(p)}
-    if totals.bounded[code]:
-        curve |= {"low": _short(low), "high": _short(high)}
-    return curve
-
-
-def _given_curves(run: RunTables) -> dict[tuple[str, str], dict]:
+def _curves(run: RunTables) -> dict[tuple[str, str], dict]:
     """Return the curves of curves.csv by pathway."""
     out: dict[tuple[str, str], dict] = {}
     for row in run.curves:
@@ -78,21 +60,16 @@ def _given_curves(run: RunTables) -> dict[tuple[str, str], dict]:
 
 def _details(run: RunTables, totals: PairTotals, drawn: ConnectionTotals) -> dict:
     """Return curve and histograms of each pathway that has any, by its code."""
-    given = _given_curves(run)
-    pairs_n = None if given else pairs_by_distance(run)
+    curves = _curves(run)
     touching = totals.appositions.sum(axis=1)
     codes = np.argsort(-touching, kind="stable")[:MOST_DETAILED_PATHWAYS]
     out, n = {}, len(run.type_names)
     for code in sorted(codes.tolist()):
         if not touching[code]:
             continue
-        if given:
-            key = (run.type_names[code // n], run.type_names[code % n])
-            curve = given.get(key, {})
-        else:
-            curve = _fallback_curve(totals, pairs_n, code)
+        key = (run.type_names[code // n], run.type_names[code % n])
         out[str(code)] = {
-            "curve": curve,
+            "curve": curves.get(key, {}),
             "appositions": _trimmed(totals.appositions[code]),
             "synapses": _trimmed(drawn.synapses[code]),
             "delays": _trimmed(drawn.delays[code]),
@@ -109,7 +86,6 @@ def gather(run: RunTables) -> dict:
             for name, sign in zip(run.type_names, run.is_excitatory, strict=True)
         ],
         "groups": {k: list(v) for k, v in (run.spec.get("groups") or {}).items()},
-        "interval_percent": run.interval_percent,
         "recordings": judged(run.recordings),
         "pathways": run.pathways,
         "bin_um": BIN_UM,

@@ -15,7 +15,7 @@ import pyarrow.csv as pa_csv
 import pyarrow.parquet as pq
 
 from circuitgen.core.errors import RunFolderError
-from circuitgen.core.run_tables import FIT, PATHWAYS
+from circuitgen.core.run_tables import CURVES, FIT, PATHWAYS
 from circuitgen.spec import read_document
 
 _NEEDED = ("cells.parquet", "pairs.parquet", "edges.parquet", "synapses.parquet")
@@ -99,15 +99,8 @@ class RunTables:
 
     @cached_property
     def curves(self) -> list[dict]:
-        """Rows of curves.csv; none where the run has no such table."""
-        path = self.path / "curves.csv"
-        return _csv_rows(path, PATHWAYS) if path.exists() else []
-
-    @property
-    def interval_percent(self) -> int:
-        """Level of the intervals of pathways.csv."""
-        rows = self.pathways
-        return 90 if rows and "p_connect_low_50" in rows[0] else 95
+        """Rows of curves.csv."""
+        return _csv_rows(self.path / "curves.csv", CURVES)
 
     @cached_property
     def wrap_um(self) -> tuple[float, float]:

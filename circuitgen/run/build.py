@@ -10,6 +10,7 @@ from pathlib import Path
 
 import numpy as np
 import pyarrow.parquet as pq
+from threadpoolctl import threadpool_limits
 
 from circuitgen.core.compilation import is_compiled
 from circuitgen.core.progress import Progress, wrapped
@@ -68,14 +69,16 @@ def _home_layers(circuit: Circuit) -> list[int]:
 
 def _fit(circuit: Circuit, histograms: Histograms, draw: int | None) -> WiringFit:
     spec = circuit.spec
-    return fit_pathways(
-        [t.is_excitatory for t in spec.cell_types],
-        _home_layers(circuit),
-        histograms.windows,
-        bouton_totals(circuit, histograms.everything),
-        seed=spec.seed,
-        draw=draw,
-    )
+    # Sums of linear algebra depend on how many cores share them.
+    with threadpool_limits(1, "blas"):
+        return fit_pathways(
+            [t.is_excitatory for t in spec.cell_types],
+            _home_layers(circuit),
+            histograms.windows,
+            bouton_totals(circuit, histograms.everything),
+            seed=spec.seed,
+            draw=draw,
+        )
 
 
 def _make_wiring(circuit: Circuit, fit: WiringFit, histograms, folder: RunFolder):

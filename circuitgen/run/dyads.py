@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
+from dataclasses import replace
 
 import numpy as np
 
 from circuitgen.run.circuit import Circuit, soma_offsets
+from circuitgen.run.pair_counter import PairCounter
 from circuitgen.run.protocol import Protocol
 
 
@@ -82,12 +84,13 @@ class Dyads:
         return out
 
     @staticmethod
-    def pairs_n(protocol: Protocol, histograms) -> float:
-        """Return all unordered pairs of a protocol, from its ordered histograms."""
-        total = 0.0
-        for (a, b), histogram in histograms.items():
-            twice = a in protocol.post_types and b in protocol.pre_types
-            total += histogram.sum() * (0.5 if twice else 1.0)
+    def pairs_n(protocol: Protocol, counter: PairCounter) -> float:
+        """Return all unordered pairs in a protocol's window, uncut."""
+        total, whole = 0.0, replace(protocol, cut=None)
+        for a in protocol.pre_types:
+            for b in protocol.post_types:
+                twice = a in protocol.post_types and b in protocol.pre_types
+                total += counter.count(a, b, whole) * (0.5 if twice else 1.0)
         return float(total)
 
     def realised(self, protocol: Protocol, pairs_n: float, pre, post) -> float:

@@ -23,6 +23,8 @@ from circuitgen.wiring import (
 )
 
 NAN = float("nan")
+# Stands for a recording's row where the pairs are all pairs of the circuit.
+ALL_PAIRS = 0
 _MIDDLE_HALF = (0.25, 0.75)
 
 
@@ -126,33 +128,30 @@ def curves_table(circuit: Circuit, fit: WiringFit, bins: DistanceBins):
 
 def laws_table(circuit: Circuit, laws: Laws, draws: Laws) -> dict[str, object]:
     """Return the columns of the table of laws: what the circuit has, then the draws."""
-    pathways, n = _pathways(circuit), len(circuit.spec.type_names)
-    codes = np.array([pre * n + post for pre, post in pathways])
+    names, n = circuit.spec.type_names, len(circuit.spec.type_names)
     columns: dict[str, object] = {
-        name: np.concatenate([getattr(laws, name), getattr(draws, name)])[
-            :, codes
-        ].reshape(-1)
+        name: np.concatenate([getattr(laws, name), getattr(draws, name)]).reshape(-1)
         for name in ("t0", "t1", "t2")
     }
     sets_n = draws.draws_n + 1
-    columns["draw"] = np.repeat(np.arange(sets_n), len(pathways))
-    names = circuit.spec.type_names
-    pre, post = np.tile(codes // n, sets_n), np.tile(codes % n, sets_n)
+    columns["draw"] = np.repeat(np.arange(sets_n), n * n)
+    pre, post = np.divmod(np.tile(np.arange(n * n), sets_n), n)
     columns["pre_type"] = names_column(pre, names)
     columns["post_type"] = names_column(post, names)
     return columns
 
 
 def windows_table(circuit: Circuit, histograms: Histograms) -> dict[str, object]:
-    """Return the columns of the table of windows: every row's pairs, then all pairs."""
-    parts = [(w.recording.row, w.histograms) for w in histograms.windows]
-    parts.append((None, histograms.everything))
+    """Return the columns of the table of windows: all pairs, then every row's pairs."""
+    parts = [(ALL_PAIRS, histograms.everything)]
+    parts += sorted(
+        ((w.recording.row, w.histograms) for w in histograms.windows),
+        key=lambda part: part[0],
+    )
     rows: list[tuple] = []
     for number, by_pathway in parts:
-        for pathway in _pathways(circuit):
-            histogram = by_pathway.get(pathway)
-            if histogram is None:
-                continue
+        for pathway in sorted(by_pathway):
+            histogram = by_pathway[pathway]
             full = histogram if histogram.ndim == 2 else histogram[:, None]
             a, lost = np.nonzero(full)
             weight = full[a, lost].astype(float)
@@ -160,7 +159,7 @@ def windows_table(circuit: Circuit, histograms: Histograms) -> dict[str, object]
     number, pre, post, a, lost, weight = zip(*rows, strict=True)
     names = circuit.spec.type_names
     return {
-        "recording_row": list(number),
+        "recording_row": np.array(number),
         "pre_type": names_column(pre, names),
         "post_type": names_column(post, names),
         "appositions_n": np.array(a),

@@ -220,7 +220,7 @@ def take_histograms(circuit: Circuit, store: SiteStore, progress) -> Histograms:
         both, pairs_n = {}, 0.0
         if recording.reciprocal_tested_n is not None:
             both = dyads.histograms(protocol)
-            pairs_n = dyads.pairs_n(protocol, histograms)
+            pairs_n = dyads.pairs_n(protocol, counter)
         windows.append(Window(recording, histograms, both, pairs_n))
     bins = distances.bins(counter)
     return Histograms(everything, reference, bins, tuple(windows), tuple(rows), dyads)

@@ -6,13 +6,38 @@ import numpy as np
 
 from circuitgen.core.compilation import kernel
 
-# Terms are rescaled when they pass this, long before they overflow.
+# Terms are rescaled when they pass this, long before they overflow, as long as the
+# exponents are within these bounds; beyond them everything is kept in logarithms.
 _LARGE = 1e200
+_MOST_T1 = 100.0
+_MOST_BEND = 20.0
 
 
 @kernel
 def _softplus(x):
     return max(x, 0.0) + np.log1p(np.exp(-abs(x)))
+
+
+@kernel
+def _sums_in_logs(a, t1, t2, out):
+    """Do what `_sums` does for exponents of any size."""
+    top = log_term = np.log(float(a)) + t1 + t2
+    for s in range(1, a):
+        log_term += np.log((a - s) / (s + 1.0)) + t1 + t2 * (2 * s + 1)
+        top = max(top, log_term)
+    log_term = np.log(float(a)) + t1 + t2
+    total = 0.0
+    for s in range(1, a + 1):
+        term, power = np.exp(log_term - top), 1.0
+        total += term
+        for k in range(1, 5):
+            power *= s
+            out[k] += term * power
+        if s < a:
+            log_term += np.log((a - s) / (s + 1.0)) + t1 + t2 * (2 * s + 1)
+    out[0] = top + np.log(total)
+    for k in range(1, 5):
+        out[k] /= total
 
 
 @kernel
@@ -24,26 +49,29 @@ def _sums(a, t1, t2, out):
     out[0], out[1], out[2], out[3], out[4] = -np.inf, 0.0, 0.0, 0.0, 0.0
     if a == 0:
         return
+    if abs(t1) > _MOST_T1 or abs(t2) * a > _MOST_BEND:
+        _sums_in_logs(a, t1, t2, out)
+        return
     ratio, bend = np.exp(t1 + 3.0 * t2), np.exp(2.0 * t2)
     # The first term is taken out and comes back as a logarithm.
-    term, total, one, two, three, four = 1.0, 0.0, 0.0, 0.0, 0.0, 0.0
+    term, total = 1.0, 0.0
     shift = np.log(float(a)) + t1 + t2
     for s in range(1, a + 1):
         total += term
-        one += term * s
-        two += term * s * s
-        three += term * s * s * s
-        four += term * s * s * s * s
+        part = term
+        for k in range(1, 5):
+            part *= s
+            out[k] += part
         term *= ratio * (a - s) / (s + 1.0)
         ratio *= bend
         if term > _LARGE:
             term, total = term / _LARGE, total / _LARGE
-            one, two = one / _LARGE, two / _LARGE
-            three, four = three / _LARGE, four / _LARGE
+            for k in range(1, 5):
+                out[k] /= _LARGE
             shift += np.log(_LARGE)
     out[0] = shift + np.log(total)
-    out[1], out[2] = one / total, two / total
-    out[3], out[4] = three / total, four / total
+    for k in range(1, 5):
+        out[k] /= total
 
 
 @kernel

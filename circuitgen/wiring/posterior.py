@@ -222,7 +222,7 @@ def _settle(mode: Mode, evidence: Evidence, begin, target) -> np.ndarray:
             if found[3] < before or share < _LEAST_SHARE:
                 break
             share /= 2
-        if found[3] >= before:
+        if not found[3] < before:
             break
         weights, (place, value, slope, loss) = tried, found
         if before - loss < _LEAST_LOSS:

@@ -1,7 +1,7 @@
 // What every figure needs: the data, elements made from plain text, numbers, CSV links.
 const DATA = JSON.parse(document.getElementById("report-data").textContent);
 const TYPES = DATA.types;
-const LEVEL = `${DATA.interval_percent} %`;
+const LEVEL = "90 %";
 const FIGURES = []; // functions that draw into the width they find
 const CSV = {}; // name -> function that returns rows of values, the header first
 

@@ -101,10 +101,10 @@ function drawDistance(plot, caption, curve, tone, code) {
   const values = [...curve.p, ...(curve.high || []), ...points.flatMap((row) => [row.p_measured, row.p_measured_high])];
   const xTop = (curve.first + curve.n.length) * DATA.bin_um;
   const sum = curve.n.reduce((a, b) => a + b, 0);
-  const band = curve.low ? ` Band: ${LEVEL} interval.` : " No interval.";
+  const band = ` Band: ${LEVEL} interval.`;
   const ends = curve.p.map((p, i) => [p, i]).filter(([p]) => p !== null);
   const [near, far] = [ends[0], ends[ends.length - 1]];
-  caption.textContent = `Line: expected probability of all pairs, by bins of ${DATA.bin_um} µm, ${number(near[0])} near ${number(at(near[1]))} µm and ${number(far[0])} near ${number(at(far[1]))} µm; ${number(sum)} pairs.${band}${points.length ? ` Ink: ${points.length} recorded, with its window and 95 % interval (groups and lateral windows included).` : ""}`;
+  caption.textContent = `Line: median probability of all pairs, by bins of ${DATA.bin_um} µm, ${number(near[0])} near ${number(at(near[1]))} µm and ${number(far[0])} near ${number(at(far[1]))} µm; ${number(sum)} pairs.${band}${points.length ? ` Ink: ${points.length} recorded, with its window and 95 % interval (groups and lateral windows included).` : ""}`;
   const area = chart(plot, { xTop, yTop: Math.max(...values.filter((v) => v !== null), 0.001), xWords: "distance (µm)", yWords: "probability", label: caption.textContent, height: 200 });
   const { svg, x, y } = area;
   const known = curve.p.map((p, i) => i).filter((i) => curve.p[i] !== null);
