@@ -30,10 +30,8 @@ def _window(row, pathway, histogram, **measured):
     if "reciprocal_tested_n" in measured:
         share = histogram / histogram.sum()
         pairs_n = 1000.0
-        # Most pairs are taken to touch as often one way as the other.
-        alike = 0.3 * np.outer(share, share) + 0.7 * np.diag(share)
-        dyads = {pathway: alike * pairs_n}
-        dyads[pathway][0, :] = dyads[pathway][:, 0] = 0.0
+        # Appositions of the two ways are taken to be independent.
+        dyads = {pathway: np.outer(share, share) * pairs_n}
     return Window(recording, {pathway: histogram}, dyads, pairs_n)
 
 
@@ -71,7 +69,7 @@ def test_song_reciprocity_is_about_four_times_chance(fit):
     low, high = proportion_confint(218, 4025, 0.05, method="wilson")
     assert low < row.fitted < high
     assert row.fitted / p**2 == pytest.approx(4.05, rel=0.2)
-    assert fit.reciprocity.log_odds[L5, L5] > 1.0
+    assert fit.reciprocity.log_ratio[L5, L5] > 1.0
 
 
 def test_feldmeyer_contacts_lie_within_two_standard_errors(fit):

@@ -86,7 +86,7 @@ def _make_wiring(circuit: Circuit, fit: WiringFit, histograms, folder: RunFolder
     return Wiring(
         circuit,
         tabulate(fit.laws, fit.draws, most),
-        fit.reciprocity.log_odds,
+        fit.reciprocity,
         histograms.dyads,
         [within(circuit, np.inf), *histograms.protocols],
         SliceLoss(circuit),

@@ -69,17 +69,24 @@ class Dyads:
         return chosen & protocol.holds(np.linalg.norm(offsets, axis=1))
 
     def histograms(self, protocol: Protocol) -> dict[tuple[int, int], np.ndarray]:
-        """Return unordered pairs that touch both ways, by appositions of each way."""
-        chosen = np.flatnonzero(self.unordered(protocol, self._pre, self._post))
-        pre, post, there = self._pre[chosen], self._post[chosen], self._count[chosen]
-        back = self.appositions(post, pre)
+        """Return unordered pairs that touch, by appositions of one way and the other."""
+        there = np.flatnonzero(self.unordered(protocol, self._pre, self._post))
+        back = np.flatnonzero(self.unordered(protocol, self._post, self._pre))
+        # Pairs that touch in the reverse direction alone.
+        alone = self.appositions(self._post[back], self._pre[back]) == 0
+        back = back[alone]
+        pre = np.concatenate([self._pre[there], self._post[back]])
+        post = np.concatenate([self._post[there], self._pre[back]])
+        forth_n = np.concatenate([self._count[there], np.zeros(back.size, np.int64)])
+        back_n = self.appositions(post, pre)
         types = self._circuit.cells.type_index
         out = {}
         for a in protocol.pre_types:
             for b in protocol.post_types:
-                mine = (types[pre] == a) & (types[post] == b) & (back > 0)
-                size = (there[mine].max(initial=0) + 1, back[mine].max(initial=0) + 1)
-                code = there[mine].astype(np.int64) * size[1] + back[mine]
+                mine = (types[pre] == a) & (types[post] == b)
+                n, m = forth_n[mine].astype(np.int64), back_n[mine].astype(np.int64)
+                size = (n.max(initial=0) + 1, m.max(initial=0) + 1)
+                code = n * size[1] + m
                 out[a, b] = np.bincount(code, minlength=size[0] * size[1]).reshape(size)
         return out
 

@@ -25,9 +25,11 @@ from circuitgen.run.sites import SiteStore
 from circuitgen.run.windows import PairBlock, SliceLoss, gather_sites
 from circuitgen.wiring import (
     LawTables,
+    PairChances,
+    Reciprocity,
     choose_sites,
-    connection_chance,
     draw_synapses,
+    pair_chances,
 )
 
 
@@ -48,12 +50,12 @@ class Realised:
 class Wiring:
     """What every block needs to be wired.
 
-    `log_odds` (types, types) are those of reciprocity, `dyads` the pairs it needs.
+    `dyads` are the pairs that `reciprocity` couples.
     """
 
     circuit: Circuit
     tables: LawTables
-    log_odds: np.ndarray
+    reciprocity: Reciprocity
     dyads: Dyads
     protocols: Sequence[Protocol]
     loss: SliceLoss
@@ -120,17 +122,16 @@ def _synapse_columns(wiring: Wiring, sites: Appositions, pair, site):
     }
 
 
-def _pair_columns(wiring: Wiring, sites: Appositions, pathway, offsets):
-    a, tables = sites.count, wiring.tables
+def _pair_columns(sites: Appositions, chances: PairChances, offsets):
     return {
         "pre_cell_id": sites.pre,
         "post_cell_id": sites.post,
-        "appositions_n": a,
+        "appositions_n": sites.count,
         "soma_distance_um": np.linalg.norm(offsets, axis=1).astype(np.float32),
-        "p_connect": tables.connects[pathway, a].astype(np.float32),
-        "p_connect_low": tables.low[pathway, a].astype(np.float32),
-        "p_connect_high": tables.high[pathway, a].astype(np.float32),
-        "synapses_expected": tables.expected[pathway, a].astype(np.float32),
+        "p_connect": chances.probability.astype(np.float32),
+        "p_connect_low": chances.low.astype(np.float32),
+        "p_connect_high": chances.high.astype(np.float32),
+        "synapses_expected": chances.expected.astype(np.float32),
     }
 
 
@@ -189,11 +190,11 @@ def wire_block(wiring: Wiring, block: int, sites: Appositions) -> None:
     pathway = circuit.pathway(sites.pre, sites.post)
     offsets = soma_offsets(circuit, sites.pre, sites.post)
     keyed = (circuit.spec.seed, sites.pre, sites.post, sites.count, pathway)
-    chance = connection_chance(
-        *keyed, wiring.tables, wiring.log_odds, wiring.dyads.appositions
+    chances = pair_chances(
+        *keyed, wiring.tables, wiring.reciprocity, wiring.dyads.appositions
     )
-    synapses = draw_synapses(*keyed, wiring.tables, chance)
-    pairs = _pair_columns(wiring, sites, pathway, offsets)
+    synapses = draw_synapses(*keyed, wiring.tables, chances.chance)
+    pairs = _pair_columns(sites, chances, offsets)
     PAIRS.write_parquet(wiring.part("pairs", block), pairs)
     pair, site = _synapse_rows(wiring, sites, synapses)
     columns = _synapse_columns(wiring, sites, pair, site)

@@ -3,9 +3,10 @@
 from circuitgen.wiring.drawing import (
     INTERVAL,
     LawTables,
+    PairChances,
     choose_sites,
-    connection_chance,
     draw_synapses,
+    pair_chances,
     tabulate,
 )
 from circuitgen.wiring.fitting import RowFit, WiringFit, fit_pathways
@@ -32,6 +33,7 @@ __all__ = [
     "LeftOut",
     "Match",
     "Moments",
+    "PairChances",
     "Reciprocity",
     "RowFit",
     "Shown",
@@ -39,7 +41,6 @@ __all__ = [
     "WiringFit",
     "both_probability",
     "choose_sites",
-    "connection_chance",
     "connection_table",
     "draw_synapses",
     "entries_of",
@@ -50,6 +51,7 @@ __all__ = [
     "leave_out",
     "match",
     "moments",
+    "pair_chances",
     "show",
     "tabulate",
     "wilson_interval",

@@ -5,12 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from scipy.special import expit, logit
 
 from circuitgen.core.draws import uniforms
 from circuitgen.wiring import kernels
 from circuitgen.wiring.law import connection_probability, count_moments, log_ways
 from circuitgen.wiring.laws import Laws, connection_table
-from circuitgen.wiring.reciprocity import conditional_probability
+from circuitgen.wiring.reciprocity import Reciprocity, margin
 
 _CHUNK = 1 << 20
 _DRAWS = 4
@@ -23,7 +24,7 @@ class LawTables:
     """What the laws say for every number of appositions, tabulated.
 
     Arrays by (pathway, appositions): `connects` P(connected), `low` and `high` its
-    posterior 5 and 95 % points, `expected` synapses, `ways` S_a. By pathway: t1, t2.
+    posterior 5 and 95 % points, `expected` synapses, `ways` S_a. By pathway: t0, t1, t2.
     """
 
     connects: np.ndarray
@@ -31,6 +32,7 @@ class LawTables:
     high: np.ndarray
     expected: np.ndarray
     ways: np.ndarray
+    t0: np.ndarray
     t1: np.ndarray
     t2: np.ndarray
 
@@ -52,42 +54,81 @@ def tabulate(laws: Laws, draws: Laws, most: int) -> LawTables:
             rows[name].append(np.quantile(drawn, bound, axis=0))
     return LawTables(
         **{name: np.array(parts) for name, parts in rows.items()},
+        t0=laws.t0[0],
         t1=laws.t1[0],
         t2=laws.t2[0],
     )
 
 
-def connection_chance(
-    seed, pre, post, appositions, pathway, tables: LawTables, log_odds, reverse
-) -> np.ndarray:
-    """Return each pair's chance to connect, given what the lower cell id's way does.
+@dataclass(frozen=True)
+class PairChances:
+    """What the laws say of pairs, (n,) each.
 
-    The direction from the lower cell id is drawn by its own probability, the other
-    given the outcome; both by draws keyed by their own ids, so that neither blocks nor
-    order matter. Without reciprocity a pair's chance is its probability.
+    `probability` of connection, its `low` and `high` point, `expected` synapses, and
+    `chance`: that to connect given what the lower cell id's direction does.
+    """
+
+    probability: np.ndarray
+    low: np.ndarray
+    high: np.ndarray
+    expected: np.ndarray
+    chance: np.ndarray
+
+
+def pair_chances(
+    seed,
+    pre,
+    post,
+    appositions,
+    pathway,
+    tables: LawTables,
+    reciprocity: Reciprocity,
+    reverse,
+) -> PairChances:
+    """Return what the laws say of pairs, coupled to their reverse where that is known.
+
+    The direction from the lower cell id is drawn by its probability, the other given
+    the outcome; both by draws keyed by their own ids, so that neither blocks nor order
+    matter.
 
     Parameters
     ----------
     seed, pre, post, appositions, pathway, tables
         As in `draw_synapses`.
-    log_odds : (types, types)
-        Log odds ratios of reciprocity, symmetric.
+    reciprocity : Reciprocity
     reverse : callable
-        Gives the appositions of ordered pairs (pre, post) of types with reciprocity.
+        Gives the appositions of ordered pairs (pre, post) of coupled types.
     """
-    chance = tables.connects[pathway, appositions]
-    types_n = log_odds.shape[0]
+    place = (pathway, appositions)
+    probability, low, high, expected = (
+        part[place]
+        for part in (tables.connects, tables.low, tables.high, tables.expected)
+    )
+    chance = probability.copy()
+    types_n = reciprocity.log_ratio.shape[0]
     from_type, to_type = np.divmod(pathway, types_n)
-    ratio = log_odds[from_type, to_type]
-    later = np.flatnonzero((ratio != 0.0) & (pre > post))
-    if later.size:
-        back = to_type[later] * types_n + from_type[later]
-        first = tables.connects[back, reverse(post[later], pre[later])]
-        outcome = uniforms(seed, "connection", post[later], pre[later])[:, 0] < first
-        chance[later] = conditional_probability(
-            chance[later], first, ratio[later], outcome
-        )
-    return chance
+    ratio = reciprocity.log_ratio[from_type, to_type]
+    coupled = np.flatnonzero((ratio != 0.0) & (pre != post))
+    if coupled.size:
+        ratio, code = ratio[coupled], pathway[coupled]
+        back = to_type[coupled] * types_n + from_type[coupled]
+        a, b = appositions[coupled], reverse(post[coupled], pre[coupled])
+        shift = reciprocity.shift
+        odds = tables.t0[code] + tables.ways[code, a] + shift[code]
+        other = tables.t0[back] + tables.ways[back, b] + shift[back]
+        synapses = expected[coupled] / np.maximum(probability[coupled], 1e-300)
+        moved = margin(odds, other, ratio)
+        for bound in (low, high):
+            with np.errstate(divide="ignore", invalid="ignore"):
+                away = logit(bound[coupled]) - logit(probability[coupled])
+                bound[coupled] = expit(logit(moved) + np.nan_to_num(away, nan=0.0))
+        probability[coupled], expected[coupled] = moved, moved * synapses
+        later = pre[coupled] > post[coupled]
+        first = margin(other, odds, ratio)
+        drawn = uniforms(seed, "connection", post[coupled], pre[coupled])[:, 0]
+        given = expit(odds + ratio * (drawn < first))
+        chance[coupled] = np.where(later, given, moved)
+    return PairChances(probability, low, high, expected, chance)
 
 
 def draw_synapses(
@@ -107,7 +148,7 @@ def draw_synapses(
         Row of each pair in the tables.
     tables : LawTables
     chance : float (n,)
-        Of connection; see `connection_chance`.
+        Of connection; see `pair_chances`.
 
     Returns
     -------

@@ -24,8 +24,8 @@ class Window:
         axes the second counts the appositions that the protocol loses: in a slice,
         those whose path to a soma is cut.
     dyads : mapping of (pre type, post type) to int array (a + 1, b + 1)
-        For rows with reciprocal counts: unordered pairs by appositions one way and
-        the other, only those that touch both ways.
+        For rows with reciprocal counts: unordered pairs that touch, by appositions one
+        way and the other.
     dyads_n : float
         All unordered pairs under the protocol.
     """
