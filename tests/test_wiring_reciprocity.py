@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from scipy.special import logit
 
 from circuitgen.spec import Recording
 from circuitgen.wiring import (
@@ -155,8 +156,7 @@ def test_drawn_dyads_show_margins_and_reciprocals():
             tables.expected[0, there if seen is first else back][p > 0] / plain[p > 0]
         )
     assert not first[there == 0].any()
-    odds = np.log(tables.connects[0, there]) - np.log1p(-tables.connects[0, there]) - 0.6
-    also = np.log(tables.connects[0, back]) - np.log1p(-tables.connects[0, back]) - 0.6
+    odds, also = (logit(tables.connects[0, a]) - 0.6 for a in (there, back))
     both = both_probability(odds, also, 1.7)
     error = np.sqrt((both * (1 - both)).sum())
     assert abs((first & second).sum() - both.sum()) < 4 * error
