@@ -8,6 +8,7 @@ from collections.abc import Sequence
 
 from circuitgen import __version__
 from circuitgen.commands import (
+    add_audit_command,
     add_build_command,
     add_grow_command,
     add_new_command,
@@ -39,6 +40,7 @@ def make_parser() -> argparse.ArgumentParser:
     for add_command in (
         add_build_command,
         add_predict_command,
+        add_audit_command,
         add_new_command,
         add_grow_command,
         add_report_command,

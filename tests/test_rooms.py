@@ -21,7 +21,7 @@ ROOMS = {
     "appositions": {"core", "spec", "morphology"},
     "wiring": {"core", "spec"},
     "prediction": {"core", "spec", "column", "appositions", "wiring", "run"},
-    "audit": {"core", "spec", "prediction"},
+    "audit": {"core", "spec", "column", "appositions", "run"},
     "export": {"core", "spec"},
     "report": {"core", "spec", "morphology"},
 }

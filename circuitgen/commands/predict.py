@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import argparse
-import csv
 import json
 import math
 from pathlib import Path
 
 from circuitgen.commands.arguments import FINE, number, say
+from circuitgen.commands.tables import write_rows
 from circuitgen.core.errors import InputError, Problem
 from circuitgen.core.progress import wrapped
 
@@ -66,38 +66,13 @@ def _window(arguments) -> tuple[float, float]:
 def _emit(arguments, content: dict, rows: list[dict], lines: list[str]) -> int:
     """Print JSON or lines; write the rows as CSV where asked."""
     if arguments.csv:
-        _write_csv(arguments.csv, rows)
+        write_rows(arguments.csv, rows)
     if arguments.json:
         say(json.dumps(content, allow_nan=False, default=str))
     else:
         for line in lines:
             say(line)
     return FINE
-
-
-def _flat(row: dict) -> dict:
-    """Spread nested summaries over columns of their own."""
-    out = {}
-    for name, value in row.items():
-        if isinstance(value, dict):
-            out |= {f"{name}_{end}": inner for end, inner in value.items()}
-        else:
-            out[name] = value
-    return out
-
-
-def _write_csv(path: Path, rows: list[dict]) -> None:
-    from circuitgen.core.files import whole_file
-
-    flat = [_flat(row) for row in rows]
-    try:
-        with whole_file(path) as partial, partial.open("w", newline="") as out:
-            writer = csv.DictWriter(out, list(flat[0]) if flat else [])
-            writer.writeheader()
-            writer.writerows(flat)
-    except OSError as error:
-        rule = f"cannot be written: {error.strerror}"
-        raise InputError([Problem(str(path), None, "--csv", rule)]) from None
 
 
 def _share(summary: dict) -> str:

@@ -203,6 +203,7 @@ FIT = Table(
         Column("synapses_pairs_n", "int64", "connections measured", True),
         Column("reciprocal_tested_n", "int64", "unordered pairs tested both ways", True),
         Column("reciprocal_connected_n", "int64", "of them connected both ways", True),
+        Column("cluster_size", "int32", "cells recorded together", True),
         Column("reciprocal_fitted", "float64", "share of the laws", True),
         Column("reciprocal_realised", "float64", "share of the drawn circuit", True),
         Column("feasible", "bool", "false: no law meets the row; see the note"),

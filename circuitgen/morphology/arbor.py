@@ -125,3 +125,25 @@ class Arbor:
         np.divide(cable - bounds[piece], length, out=inside, where=length > 0)
         inside = np.where(self.piece_backward[piece], 1.0 - inside, inside)
         return self.piece_number[piece], np.clip(inside, 0.0, 1.0)
+
+    def place_on_segment(
+        self, number: np.ndarray, fraction: np.ndarray
+    ) -> tuple[np.ndarray, np.ndarray]:
+        """Turn places on the samples of the SWC file into places on segments.
+
+        The inverse of `place_in_file`; arguments and results are swapped.
+        """
+        order = np.argsort(self.piece_number, kind="stable")
+        place = np.searchsorted(self.piece_number[order], number)
+        piece = order[np.minimum(place, order.size - 1)]
+        inside = np.where(self.piece_backward[piece], 1.0 - fraction, fraction)
+        length = self.piece_bounds_um[piece + 1] - self.piece_bounds_um[piece]
+        cable = self.piece_bounds_um[piece] + inside * length
+        by_start = np.argsort(self.cable_start_um, kind="stable")
+        starts = self.cable_start_um[by_start]
+        at = np.searchsorted(starts, cable, side="right") - 1
+        segment = by_start[np.maximum(at, 0)]
+        begin, end = self.cable_start_um[segment], self.cable_end_um[segment]
+        along = np.zeros(cable.shape)
+        np.divide(cable - begin, end - begin, out=along, where=end > begin)
+        return segment, np.clip(along, 0.0, 1.0)

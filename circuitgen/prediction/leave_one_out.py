@@ -12,7 +12,7 @@ from scipy.stats import binom, false_discovery_control
 from circuitgen.prediction.plain_rules import RULES, PlainRule
 from circuitgen.prediction.quantiles import POINTS
 from circuitgen.prediction.tables import RunTables
-from circuitgen.spec import Recording
+from circuitgen.run import read_recorded
 from circuitgen.wiring import BoutonTotal, LeftOut, Window, leave_out
 
 # Share of false alarms among the recordings that are said to disagree.
@@ -29,27 +29,6 @@ def _dense(frame: pd.DataFrame) -> np.ndarray:
     return out[:, 0] if shape[1] == 1 else out
 
 
-def _recordings(tables: RunTables) -> list[Recording]:
-    """Return the recordings of a run, as its table of recordings holds them."""
-    frame = pd.read_csv(tables.folder / "fit.csv", keep_default_na=False, na_values=[""])
-    whole = {name for name in Recording.model_fields if name.endswith("_n")} | {"row"}
-    out = []
-    for row in frame.to_dict("records"):
-        row |= {
-            "synapses_mean": row["synapses_mean_measured"],
-            "synapses_sd": row["synapses_sd_measured"],
-        }
-        if pd.isna(row["tested_n"]):
-            row["probability"] = row["p_measured"]
-        known = {
-            name: int(row[name]) if name in whole else row[name]
-            for name in Recording.model_fields
-            if name in row and not pd.isna(row[name])
-        }
-        out.append(Recording.model_construct(**known))
-    return out
-
-
 def _windows(tables: RunTables) -> tuple[list[Window], dict]:
     """Return every recording with its pairs, and the histograms of all pairs."""
     stored = pq.read_table(tables.folder / "windows.parquet").to_pandas()
@@ -60,7 +39,7 @@ def _windows(tables: RunTables) -> tuple[list[Window], dict]:
         by_row.setdefault(number, {})[index[pre], index[post]] = _dense(rows)
     windows = [
         Window(recording, by_row.get(recording.row, {}))
-        for recording in _recordings(tables)
+        for recording in read_recorded(tables.folder)
     ]
     return windows, by_row.get(0, {})
 

@@ -8,6 +8,7 @@ pathways, mean and spread being those of largest likelihood over the other recor
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import cache
 
 import numpy as np
 from scipy.special import expit
@@ -37,6 +38,13 @@ def _probabilities(window: Window, rule: str) -> np.ndarray:
     return out
 
 
+@cache
+def _normals() -> np.ndarray:
+    """Shares of the grid's log odds under every normal, (spreads, means, odds)."""
+    out = norm.pdf(_ODDS, _MEANS[None, :, None], _SPREADS[:, None, None])
+    return out / out.sum(axis=2, keepdims=True)
+
+
 class PlainRule:
     """One rule over some recordings: their likelihoods on a grid of log odds."""
 
@@ -46,10 +54,7 @@ class PlainRule:
         self._p = np.array([_probabilities(w, rule) for w in windows])
         likelihood = binom.pmf(k[:, None], self._n[:, None], self._p)
         # (recordings, spreads, means): likelihood under every normal on the grid.
-        self._normals = np.array(
-            [[norm.pdf(_ODDS, mean, spread) for mean in _MEANS] for spread in _SPREADS]
-        )
-        self._normals /= self._normals.sum(axis=2, keepdims=True)
+        self._normals = _normals()
         with np.errstate(divide="ignore"):
             self._logs = np.log(np.einsum("rx,smx->rsm", likelihood, self._normals))
         self._logs = np.maximum(self._logs, -1e6)

@@ -3,7 +3,8 @@
 from circuitgen.run.build import Outcome, build
 from circuitgen.run.circuit import soma_offsets
 from circuitgen.run.pair_counter import PairCounter
-from circuitgen.run.protocol import Protocol, protocol_of
+from circuitgen.run.protocol import Protocol, protocol_of, slice_of
+from circuitgen.run.recorded import read_recorded
 from circuitgen.run.reopen import ReopenedCircuit, read_provenance
 from circuitgen.run.windows import PairBlock, SliceLoss, Tally
 
@@ -18,5 +19,7 @@ __all__ = [
     "build",
     "protocol_of",
     "read_provenance",
+    "read_recorded",
+    "slice_of",
     "soma_offsets",
 ]

@@ -185,7 +185,7 @@ def _fit_row(row: RowFit, realised: Realised, reciprocal: tuple[float, float]):
         "row source pre_type post_type use distance_kind distance_low_um"
         " distance_high_um slice_thickness_um soma_depth_low_um soma_depth_high_um"
         " tested_n connected_n synapses_pairs_n reciprocal_tested_n"
-        " reciprocal_connected_n"
+        " reciprocal_connected_n cluster_size"
     )
     return {name: getattr(recording, name) for name in kept.split()} | {
         "p_measured": NAN if measured is None else measured,

@@ -2,7 +2,7 @@
 
 from circuitgen.spec.document import Document, read_document
 from circuitgen.spec.fields import FileName, LengthUm, Name, NotNegative, Positive
-from circuitgen.spec.load import load_spec
+from circuitgen.spec.load import load_spec, parse_groups
 from circuitgen.spec.models import (
     AppositionRules,
     CellType,
@@ -12,7 +12,7 @@ from circuitgen.spec.models import (
     Spec,
 )
 from circuitgen.spec.recordings import COLUMNS as RECORDING_COLUMNS
-from circuitgen.spec.recordings import Recording
+from circuitgen.spec.recordings import Recording, read_recordings
 from circuitgen.spec.starter import write_starter
 from circuitgen.spec.validation import Part, RuleError, validate_document
 
@@ -34,7 +34,9 @@ __all__ = [
     "RuleError",
     "Spec",
     "load_spec",
+    "parse_groups",
     "read_document",
+    "read_recordings",
     "validate_document",
     "write_starter",
 ]

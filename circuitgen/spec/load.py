@@ -7,6 +7,8 @@ import os
 from collections.abc import Iterator
 from pathlib import Path
 
+import yaml
+
 from circuitgen.core.errors import InputError, Problem, nearest_name
 from circuitgen.spec.document import Document, read_document
 from circuitgen.spec.models import CellType, CellTypeEntry, Spec, SpecFile
@@ -173,3 +175,9 @@ def load_spec(path: Path) -> Spec:
         text=document.text,
         input_files=tuple(sorted(files.used)),
     )
+
+
+def parse_groups(text: str) -> dict[str, tuple[str, ...]]:
+    """Return the groups of a spec's text that was loaded before."""
+    groups = yaml.safe_load(text).get("groups") or {}
+    return {name: tuple(members) for name, members in groups.items()}

@@ -79,6 +79,7 @@ class RecordingRow(Part):
     synapses_pairs_n: _Sample | None = None
     reciprocal_tested_n: _Sample | None = None
     reciprocal_connected_n: _Count | None = None
+    cluster_size: Annotated[int, Field(ge=2, le=100)] | None = None
     use: Literal["fit", "audit"] = "fit"
 
     @classmethod
@@ -286,7 +287,7 @@ def _typed(column: str, text: str) -> object:
         return text
     number = float(text)
     # Programs that keep blanks in columns of numbers write counts as 12.0.
-    is_whole = column.endswith("_n") and number.is_integer()
+    is_whole = column.endswith(("_n", "_size")) and number.is_integer()
     return int(number) if is_whole else number
 
 
