@@ -10,6 +10,7 @@ from circuitgen import __version__
 from circuitgen.commands import (
     add_build_command,
     add_grow_command,
+    add_inspect_command,
     add_new_command,
     add_predict_command,
     add_report_command,
@@ -40,6 +41,7 @@ def make_parser() -> argparse.ArgumentParser:
         add_build_command,
         add_predict_command,
         add_new_command,
+        add_inspect_command,
         add_grow_command,
         add_report_command,
     ):

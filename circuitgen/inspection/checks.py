@@ -4,6 +4,8 @@
 microscopy); the number behind is the most extreme of them. "Common practice" marks what
 is usual rather than measured here.
 
+no_cable
+    Nothing outside the soma.
 axon_short
     Axon under 1,000 um or under half of the dendrites (both over 500 um of cable).
     Healthy axons have 1.3 times their dendrites or more. Common practice: local axons
@@ -82,11 +84,16 @@ def check(arbor: Arbor, measures: Measures, upright: str, codes: set[str]):
     """
     remarks = [*_axon(measures), *_radii(arbor, codes), *_soma(measures, codes)]
     shape = shape_of(arbor)
-    if shape is None or codes & {"units_large", "units_small"}:
+    if shape is None:
+        return [*remarks, _no_cable()]
+    if codes & {"units_large", "units_small"}:
         return remarks
+    flat = _flat(shape)
+    if flat:  # all that lies in one plane ends on it, and has no axes to compare
+        return remarks + flat
     remarks += _face(find_face(arbor), upright)
-    form = _flat(shape) or _upright(shape, upright) or _shrunk(shape, upright)
-    return remarks + form + _downward(shape, upright)
+    remarks += _upright(shape, upright) or _shrunk(shape, upright)
+    return remarks + _downward(shape, upright)
 
 
 def up_vector(upright: str) -> np.ndarray:
@@ -101,6 +108,12 @@ def _axes(upright: str) -> tuple[int, int, int]:
     up = AXIS_NAMES.index(upright[-1])
     one, other = (axis for axis in range(3) if axis != up)
     return up, one, other
+
+
+def _no_cable() -> Remark:
+    effect = "A soma alone makes no contacts and takes hardly any."
+    remedy = "Take another reconstruction, or another export of this one."
+    return Remark("blocks", "no_cable", "no cable outside the soma", effect, remedy)
 
 
 def _axon(m: Measures) -> list[Remark]:
@@ -251,7 +264,10 @@ def _shrunk(shape: Shape, upright: str) -> list[Remark]:
     across, bend = shape.direction, shape.bend
     short, long = (one, other) if across[one] < across[other] else (other, one)
     if across[short] < ACROSS * across[long]:
-        ratio, names = across[short] / across[long], (AXIS_NAMES[short], AXIS_NAMES[long])
+        ratio, names = (
+            across[short] / across[long],
+            (AXIS_NAMES[short], AXIS_NAMES[long]),
+        )
         seen = f"cable runs along {names[0]} only {ratio:.2f} times as much as along "
         seen += f"{names[1]}, both across the axis toward the pia"
         return [Remark("warning", "shrunk_across", seen, effect, remedy)]

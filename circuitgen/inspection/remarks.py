@@ -1,4 +1,4 @@
-"""What an inspection says of a reconstruction: seen, meant for connectivity, to be done."""
+"""What an inspection says: what was seen, what it does to connectivity, what to do."""
 
 from __future__ import annotations
 
@@ -127,6 +127,11 @@ def remarks_of_reader(findings: Iterable[Finding]) -> list[Remark]:
             Remark(severity, finding.code, seen, effect, remedy, finding.line)
         )
     return remarks
+
+
+def printable(text: object) -> str:
+    """Replace characters that do not print, so that a name cannot spoil a line."""
+    return "".join(sign if sign.isprintable() else "?" for sign in str(text))
 
 
 def _seen(text: str) -> str:

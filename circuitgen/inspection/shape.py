@@ -108,4 +108,3 @@ def _bends(arbor: Arbor) -> np.ndarray:
         ratios.append(np.log(size[first] / size[second]))
     solve = np.linalg.pinv([[0, 1, -1], [1, 0, -1], [1, -1, 0]])
     return np.exp(solve @ np.array(ratios))
-
