@@ -11,7 +11,7 @@ from circuitgen.inspection.checks import AXIS_NAMES, up_vector
 from circuitgen.inspection.remarks import printable
 from circuitgen.morphology.arbor import Arbor, Kind
 
-LARGEST_PX = 300.0
+WIDEST_PX, HIGHEST_PX = 300.0, 420.0
 # Whole units of a drawing per pixel, and how far apart points are kept.
 UNITS_PER_PX = 4
 _APART_UNITS = 5.0
@@ -56,12 +56,13 @@ def drawings(arbor: Arbor, upright: str, name: str) -> list[tuple[str, str]]:
     -------
     list of (svg, caption)
     """
-    ends = np.vstack([arbor.start_um, arbor.end_um])
-    extent = float(np.ptp(ends, axis=0).max()) or 1.0
-    scale = UNITS_PER_PX * LARGEST_PX / extent
+    extent = np.ptp(np.vstack([arbor.start_um, arbor.end_um]), axis=0)
+    both = views(upright)
+    across = max(float(np.abs(view.across) @ extent) for view in both) or 1.0
+    high = max(float(np.abs(view.up) @ extent) for view in both) or 1.0
+    scale = UNITS_PER_PX * min(WIDEST_PX / across, HIGHEST_PX / high)
     return [
-        (_svg(arbor, view, scale, f"{name}. {view.words}"), view.words)
-        for view in views(upright)
+        (_svg(arbor, view, scale, f"{name}. {view.words}"), view.words) for view in both
     ]
 
 
@@ -121,12 +122,12 @@ def _step(here: list[int], there: list[int]) -> str:
 
 
 def _soma(arbor: Arbor, start: np.ndarray, end: np.ndarray, scale: float) -> str:
-    """Write the soma as discs around the ends of its capsules, at least 2 px wide."""
+    """Write the soma as discs around the ends of its capsules, at least 5 px wide."""
     rows = arbor.kind == Kind.SOMA
     places = np.vstack([start[rows], end[rows]])
     radii = np.hstack([arbor.start_radius_um[rows], arbor.end_radius_um[rows]]) * scale
     discs = np.unique(
-        np.rint(np.column_stack([places, np.maximum(radii, UNITS_PER_PX)])), axis=0
+        np.rint(np.column_stack([places, np.maximum(radii, 2.5 * UNITS_PER_PX)])), axis=0
     )
     return "".join(
         f"M{x - r:.0f} {y:.0f}a{r:.0f} {r:.0f} 0 1 0 {2 * r:.0f} 0"

@@ -1,7 +1,8 @@
 """Mended files: what the reader repaired, written so that nothing is left to repair.
 
 The reader joins loose pieces across gaps and keeps the gaps free of cable. SWC cannot
-say that, so in a mended file a gap is cable, and the header says how much.
+say that, so in a mended file a gap is cable, and the header says how much. Where an
+outline became a sphere, neurites begin at its middle.
 """
 
 from __future__ import annotations
@@ -123,7 +124,7 @@ def mended_samples(r: Reconstruction) -> tuple[dict[str, np.ndarray], np.ndarray
 
 
 def _joints(r: Reconstruction, gap: np.ndarray) -> list[tuple[int, int, float]]:
-    """Return (row, host, share) of gaps that begin between two samples, outermost first.
+    """Return (row, host, share) of gaps that begin between two samples, innermost first.
 
     The share is the joint's place on the host's piece, 0 at its begin, 1 at its sample.
     """
@@ -134,7 +135,7 @@ def _joints(r: Reconstruction, gap: np.ndarray) -> list[tuple[int, int, float]]:
     short = np.linalg.norm(r.begin_um[rows] - end, axis=1)
     share = 1.0 - short / np.where(length > 0, length, 1.0)
     between = (short > _WRITTEN_UM) & (length > 0) & ~r.bridged[host]
-    order = np.lexsort((share, host))[::-1]
+    order = np.lexsort((share, host))
     order = order[between[order]]
     return [(int(rows[i]), int(host[i]), max(float(share[i]), 0.0)) for i in order]
 

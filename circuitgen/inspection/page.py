@@ -12,7 +12,7 @@ from circuitgen.inspection.measures import Measures
 from circuitgen.inspection.remarks import Remark, printable
 from circuitgen.inspection.sheet import Sheet
 
-_REMARKS_SHOWN = 30
+_PROBLEMS_SHOWN = 10
 # The page may load nothing, from nowhere; its own styles apart.
 _POLICY = "default-src 'none'; style-src 'unsafe-inline'"
 _KEY = (
@@ -56,9 +56,9 @@ def _text(value: object) -> str:
 
 
 def _verdict(sheet: Sheet) -> str:
-    """Tell in a word whether a file can be used."""
+    """Tell in a few words whether a file can be used."""
     if not sheet.usable:
-        return '<b class="blocks">cannot be used</b>'
+        return '<b class="blocks">unusable</b>'
     if sheet.number_of("warning"):
         return '<b class="warning">look at it</b>'
     return "fine"
@@ -78,7 +78,7 @@ def _overview(sheets: Sequence[Sheet]) -> str:
 <p>{usable} of {len(sheets)} files can be used in a circuit.</p>
 <table>
 <thead><tr><th scope="col">file</th><th scope="col">axon, mm</th>
-<th scope="col">dendrite, mm</th><th scope="col" class="wide">verdict</th></tr></thead>
+<th scope="col">dendrite, mm</th><th scope="col">verdict</th></tr></thead>
 <tbody>
 {"".join(rows)}
 </tbody>
@@ -87,8 +87,8 @@ def _overview(sheets: Sequence[Sheet]) -> str:
 
 def _article(sheet: Sheet, number: int) -> str:
     """Write what there is on one file."""
-    header = f"<header><h2>{_text(sheet.path.name)}</h2>"
-    header += f'<p class="quiet">{_text(sheet.path)}</p>{_verdict(sheet)}</header>'
+    header = f"<header><h2>{_text(sheet.path.name)}</h2>{_verdict(sheet)}"
+    header += f'<p class="quiet">{_text(sheet.path)}</p></header>'
     views = ""
     if sheet.arbor is not None:
         figures = "".join(
@@ -130,10 +130,23 @@ def _remarks(remarks: Sequence[Remark]) -> str:
     """List the remarks on a file."""
     if not remarks:
         return '<p class="quiet">No findings.</p>'
-    items = "".join(_remark(remark) for remark in remarks[:_REMARKS_SHOWN])
-    hidden = len(remarks) - _REMARKS_SHOWN
-    more = f"<p>… and {hidden} more.</p>" if hidden > 0 else ""
-    return f'<ul class="remarks">{items}</ul>{more}'
+    if remarks[0].code == "refused":
+        return _refusal(remarks)
+    items = "".join(_remark(remark) for remark in remarks)
+    return f'<ul class="remarks">{items}</ul>'
+
+
+def _refusal(remarks: Sequence[Remark]) -> str:
+    """Tell why the reader refused a file: all problems have one effect."""
+    lines = [f"<p>{_text(remark.seen)}</p>" for remark in remarks[:_PROBLEMS_SHOWN]]
+    if len(remarks) > _PROBLEMS_SHOWN:
+        lines.append(f"<p>… and {len(remarks) - _PROBLEMS_SHOWN} problems more</p>")
+    return (
+        '<ul class="remarks"><li class="blocks"><p><b class="blocks">blocks</b>:'
+        f" the file was refused</p>{''.join(lines)}"
+        f"<p>For the circuit: {_text(remarks[0].effect)}</p>"
+        f"<p>To do: {_text(remarks[0].remedy)}</p></li></ul>"
+    )
 
 
 def _remark(remark: Remark) -> str:

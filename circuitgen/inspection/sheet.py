@@ -123,7 +123,7 @@ def _refusal(problem: Problem) -> Remark:
         "blocks",
         "refused",
         seen,
-        "None can be computed: a build stops at this file.",
-        "Mend the line, or take another export of the file.",
+        "A build stops at this file.",
+        "Mend what is named, or take another export of the file.",
         problem.line,
     )
