@@ -10,17 +10,20 @@ from circuitgen.inspection.sheet import Sheet
 
 WIDTH = 80
 REFUSALS_SHOWN = 3
-_NAME = 18
-_HEAD = """\
-                     axon basal apical        extent  tips branch  path radius
-file                   mm    mm     mm     x, y, z um      points    um     um
-"""
+_NAME = 17
+_WIDTHS = (5, 5, 6, 17, 4, 6, 5, 5)
+_HEAD = (
+    ("", "axon", "basal", "apical", "extent", "tips", "branch", "path", "rad."),
+    ("file", "mm", "mm", "mm", "x, y, z um", "", "points", "um", "um"),
+)
+_MARKS = "X: cannot be used. !: has warnings. rad.: median radius."
 
 
 def table_text(sheets: Sequence[Sheet]) -> str:
     """Lay out the numbers of all files, then what is to be said of them."""
     rows = [_row(sheet) for sheet in sheets if sheet.measures]
-    parts = [_HEAD + "\n".join(rows)] if rows else []
+    head = [_line(" ", name, cells) for name, *cells in _HEAD]
+    parts = ["\n".join([*head, *rows, _MARKS])] if rows else []
     parts += [_said(sheet) for sheet in sheets if sheet.remarks]
     parts.append(_summary(sheets))
     return "\n\n".join(parts)
@@ -48,12 +51,15 @@ def _row(sheet: Sheet) -> str:
     if len(extent) > 17:
         extent = " ".join(f"{value:.0e}" for value in m.extent_um)
     path = max(m.longest_axon_path_um, m.longest_dendrite_path_um)
-    lengths = (m.axon_um, 5), (m.basal_um, 5), (m.apical_um, 6)
-    cells = [_number(um / 1000, width, 1) for um, width in lengths]
-    cells += [extent.rjust(17), f"{m.axon_tips_n + m.dendrite_tips_n:4d}"]
-    cells += [f"{m.branch_points_n:6d}", _number(path, 5, 0)]
-    cells += [_number(m.radius_um[0], 5, 2)]
-    return f"{mark} {shortened(sheet.path.name, _NAME):<{_NAME}} {' '.join(cells)}"
+    cells = [_number(um / 1000, 5, 1) for um in (m.axon_um, m.basal_um, m.apical_um)]
+    cells += [extent, str(m.axon_tips_n + m.dendrite_tips_n), str(m.branch_points_n)]
+    cells += [_number(path, 5, 0), _number(m.radius_um[0], 5, 2)]
+    return _line(mark, sheet.path.name, cells)
+
+
+def _line(mark: str, name: str, cells: Sequence[str]) -> str:
+    padded = [cell.rjust(width) for cell, width in zip(cells, _WIDTHS, strict=True)]
+    return f"{mark} {shortened(name, _NAME):<{_NAME}} {' '.join(padded)}"
 
 
 def _said(sheet: Sheet) -> str:
