@@ -23,16 +23,17 @@ def run(capsys, *words):
 
 
 def test_good_files_give_a_table_of_80_columns(capsys):
-    code, out, err = run(capsys, *STAND_INS)
+    paths = STAND_INS[::5]
+    code, out, err = run(capsys, *paths)
     assert code == FINE
     assert err == ""
     lines = out.splitlines()
     assert max(map(len, lines)) <= 80
     assert out.isascii()
     rows = [line for line in lines if line.startswith("  L")]
-    assert len(rows) == len(STAND_INS)
+    assert len(rows) == len(paths)
     assert len({len(row) for row in rows}) == 1
-    assert f"{len(STAND_INS)} of {len(STAND_INS)} files can be used" in out
+    assert f"{len(paths)} of {len(paths)} files can be used" in out
 
 
 def test_spoilt_files_are_told_in_80_columns_with_effect_and_remedy(capsys, tmp_path):
@@ -165,6 +166,26 @@ def test_a_page_replaces_no_other_kind_of_file(capsys, tmp_path):
     assert code == BAD_INPUT
     assert "must end in .html" in err
     assert path.read_text() == PLAIN
+
+
+@pytest.mark.skipif(os.name != "posix", reason="names are text here")
+def test_a_name_that_is_no_text_is_told_and_mended(capsys, tmp_path):
+    path = os.path.join(os.fsencode(tmp_path), b"b\xff\n.swc")
+    with open(path, "w") as stream:
+        stream.write("n type x y z r parent\n" + STAND_INS[4].read_text())
+    words = [
+        os.fsdecode(path),
+        "--html",
+        tmp_path / "p.html",
+        "--fix-to",
+        tmp_path / "m",
+    ]
+    code, out, _ = run(capsys, *words)
+    assert code == FINE
+    assert "  b??.swc " in out
+    assert "b??.swc" in (tmp_path / "p.html").read_text("utf-8")
+    [mended] = (tmp_path / "m").iterdir()
+    assert mended.read_text("utf-8").startswith("# Mended by circuitgen")
 
 
 def test_the_same_file_twice_is_told_once(capsys):

@@ -5,10 +5,10 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from builders_inspection import STAND_INS, real_files, stand_in
-from builders_morphology import PLAIN, write_table
+from builders_morphology import PLAIN, made_up_tree, write_table
 
 from circuitgen.core.errors import InputError
-from circuitgen.inspection import inspect_file, mend_files
+from circuitgen.inspection import inspect_file, mend_files, page_html, table_text
 from circuitgen.morphology import read_reconstruction
 
 # Text of files in disorder; each is mended by some rule of the reader.
@@ -111,6 +111,31 @@ def test_random_breaks_are_mended(tmp_path):
         path = write_table(tmp_path / f"broken_{round_}.swc", broken)
         _, after, _ = mended(tmp_path, path)
         assert after.number_of("repair") == 0
+
+
+def test_made_up_cells_of_any_kind_are_inspected_and_mended(tmp_path):
+    """Loose, of no extent, of odd types, all soma: no error, no repair left over."""
+    rng, spoil, mended_n = np.random.default_rng(5), range(5), 0
+    for round_ in range(60):
+        table = made_up_tree(rng, samples=int(rng.choice([0, 8, 40])))
+        which = spoil[round_ % len(spoil)]
+        if which == 0:
+            table[:, 2:5] = 0
+        elif which == 1:
+            table[:, 2:5] = np.round(table[:, 2:5])
+            table[:, 5] = 0
+        elif which == 2:
+            table[rng.random(len(table)) < 0.2, 6] = -1
+        elif which == 3:
+            table[:, 1] = rng.integers(0, 8, len(table))
+        else:
+            table[:, 1] = 1
+        sheet = inspect_file(write_table(tmp_path / f"{round_}.swc", table))
+        assert "nan" not in page_html([sheet]) + table_text([sheet])
+        for path in mend_files([sheet], tmp_path / "mended"):
+            assert inspect_file(path).number_of("repair") == 0
+            mended_n += 1
+    assert mended_n > 20
 
 
 def test_sound_files_are_not_written(tmp_path):

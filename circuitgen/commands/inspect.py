@@ -87,7 +87,7 @@ def _write(path: Path, text: str) -> None:
 
 def _mended_text(mended_n: int, files_n: int, folder: Path) -> str:
     text = f"{mended_n} of {files_n} files mended"
-    return f"{text} in {folder}; the others needed no repair or could not be read."
+    return f"{text}; the others needed no repair, or could not be read.\nin: {folder}"
 
 
 def add_inspect_command(commands) -> None:

@@ -218,7 +218,7 @@ def _upright(shape: Shape, upright: str) -> list[Remark]:
         likely = _likely_axis(shape.apical_up)
         seen = f"the apical dendrite lies {angle:.0f} degrees off {upright}, the axis "
         seen += f"toward the pia, nearest to {likely}"
-        remedy = f"Set upright: {likely} in the spec (here: --upright {likely}), or "
+        remedy = f"Set upright: {likely} in the spec (here: --upright={likely}), or "
         remedy += "turn the file."
         return [Remark("blocks", "upright_apical", seen, effect, remedy)]
     spread = shape.spread_um
