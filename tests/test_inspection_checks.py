@@ -88,10 +88,11 @@ def test_shrinkage_across_is_found(tmp_path, path, axis):
     assert f"along {axis} only" in seen
 
 
+@pytest.mark.parametrize("name", [ROUND, "L6_inverted_1", "L1_dense_1"])
 @pytest.mark.parametrize("factor", [0.5, 0.6])
-def test_stronger_shrinkage_is_found(tmp_path, factor):
+def test_stronger_shrinkage_is_found(tmp_path, factor, name):
     for axis in "xyz":
-        sheet = inspected(tmp_path, scaled(stand_in(ROUND), **{axis: factor}))
+        sheet = inspected(tmp_path, scaled(stand_in(name), **{axis: factor}))
         assert codes(sheet, "warning") & {"shrunk_across", "shrunk_upright"}, axis
 
 

@@ -92,8 +92,12 @@ def check(arbor: Arbor, measures: Measures, upright: str, codes: set[str]):
     if flat:  # all that lies in one plane ends on it, and has no axes to compare
         return remarks + flat
     remarks += _face(find_face(arbor), upright)
-    remarks += _upright(shape, upright) or _shrunk(shape, upright)
-    return remarks + _downward(shape, upright)
+    turned = _upright(shape, upright)
+    # Which axes lie across is unknown where the apical dendrite shows another one up.
+    # An odd spread alone may come from shrinkage as well: then both are told.
+    if not any(remark.severity == "blocks" for remark in turned):
+        turned += _shrunk(shape, upright)
+    return remarks + turned + _downward(shape, upright)
 
 
 def up_vector(upright: str) -> np.ndarray:
