@@ -11,6 +11,7 @@ from circuitgen.commands import (
     add_audit_command,
     add_build_command,
     add_grow_command,
+    add_inspect_command,
     add_new_command,
     add_predict_command,
     add_report_command,
@@ -42,6 +43,7 @@ def make_parser() -> argparse.ArgumentParser:
         add_predict_command,
         add_audit_command,
         add_new_command,
+        add_inspect_command,
         add_grow_command,
         add_report_command,
     ):

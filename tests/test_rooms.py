@@ -17,6 +17,7 @@ ROOMS = {
     "core": set(),
     "spec": {"core"},
     "morphology": {"core", "spec"},
+    "inspection": {"core", "spec", "morphology"},
     "column": {"core", "spec", "morphology"},
     "appositions": {"core", "spec", "morphology"},
     "wiring": {"core", "spec"},

@@ -3,6 +3,7 @@
 from circuitgen.commands.audit import add_audit_command
 from circuitgen.commands.build import add_build_command
 from circuitgen.commands.grow import add_grow_command
+from circuitgen.commands.inspect import add_inspect_command
 from circuitgen.commands.new import add_new_command
 from circuitgen.commands.predict import add_predict_command
 from circuitgen.commands.report import add_report_command
@@ -11,6 +12,7 @@ __all__ = [
     "add_audit_command",
     "add_build_command",
     "add_grow_command",
+    "add_inspect_command",
     "add_new_command",
     "add_predict_command",
     "add_report_command",
