@@ -14,8 +14,9 @@ from circuitgen.spec import Recording
 from circuitgen.wiring import Law, Window, moments
 
 TYPES_N = 12
-# Spreads by presynaptic type, by postsynaptic type and by pathway; eta, then t1.
-SPREADS = (0.6, 0.6, 0.8, 0.3, 0.3, 0.3)
+# Scales of the half-normals that a world's six spreads are drawn from: by presynaptic
+# type, by postsynaptic type and by pathway; of eta, then of t1.
+SPREAD_SCALES = (0.7, 0.7, 1.0, 0.4, 0.4, 0.5)
 KINDS = ("well specified", "heavy tails", "missing interaction", "overdispersed")
 
 
@@ -56,14 +57,16 @@ def _laws(random, kind: str, is_excitatory, home):
         random.normal(-0.6, 0.8) - 0.8 * pre + 0.2 * post - 0.3 * pre * post + 0.5 * same
     )
     t1 = random.normal(-0.8, 0.4) - 0.3 * pre + 0.0 * post
+    spreads = np.abs(random.standard_normal(6)) * SPREAD_SCALES
+    t1 = t1 + np.zeros_like(eta)
     for place, values in ((0, eta), (3, t1)):
-        values += SPREADS[place] * random.standard_normal(TYPES_N)[:, None]
-        values += SPREADS[place + 1] * random.standard_normal(TYPES_N)[None, :]
-        values += _deviations(random, kind, SPREADS[place + 2])
+        values += spreads[place] * random.standard_normal(TYPES_N)[:, None]
+        values += spreads[place + 1] * random.standard_normal(TYPES_N)[None, :]
+        values += _deviations(random, kind, spreads[place + 2])
     if kind == "missing interaction":
         score_pre, score_post = random.standard_normal((2, TYPES_N))
         eta += 0.7 * score_pre[:, None] * score_post[None, :]
-    return eta, t1 + np.zeros_like(eta)
+    return eta, t1
 
 
 def _recording(random, kind: str, row, names, p, found) -> Recording:

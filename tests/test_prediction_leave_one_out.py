@@ -52,10 +52,12 @@ def test_scores_are_those_of_the_distribution():
 def test_plain_rules_are_distributions_that_follow_the_others(world, rule):
     windows = world.windows
     classes = [str(place % 2) for place in range(len(windows))]
-    found = PlainRule(rule, windows, classes).predict([3], 3)
+    found = PlainRule(rule, windows, classes).predict([3], windows[3], classes[3])
     assert found.sum() == pytest.approx(1.0, abs=1e-9)
     assert found.size == windows[3].recording.tested_n + 1
-    again = PlainRule(rule, windows, classes).predict(list(range(15)), 3)
+    again = PlainRule(rule, windows, classes).predict(
+        list(range(15)), windows[3], classes[3]
+    )
     assert (again != found).any()
 
 
@@ -71,7 +73,9 @@ def test_one_probability_for_all_is_a_random_effect_by_maximum_likelihood(world)
     ]
     _, mean, size = max(grid)
     tested = world.windows[0].recording.tested_n
-    found = PlainRule(RULES[0], world.windows, [""] * len(world.windows)).predict([0], 0)
+    found = PlainRule(RULES[0], windows, [""] * len(windows)).predict(
+        [], world.windows[0], ""
+    )
     counts = np.arange(tested + 1)
     wanted = betabinom.pmf(counts, tested, mean * size, (1 - mean) * size)
     # Two families of the same spread: their means agree within a tenth of the range.

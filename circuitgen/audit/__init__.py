@@ -5,6 +5,7 @@ from circuitgen.audit.foreign import read_foreign, read_mapping
 from circuitgen.audit.graph import graph_facts
 from circuitgen.audit.judge import LEVEL, Judgement, audit, overall
 from circuitgen.audit.slices import SliceView
+from circuitgen.audit.triads import read_triads
 
 __all__ = [
     "LEVEL",
@@ -17,4 +18,5 @@ __all__ = [
     "read_foreign",
     "read_mapping",
     "read_run",
+    "read_triads",
 ]

@@ -5,10 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
+import numpy as np
 from scipy.stats import false_discovery_control
 
 from circuitgen.audit.circuit import AuditCircuit
 from circuitgen.audit.experiment import Experimenter, Found
+from circuitgen.audit.graph import CLASSES
 from circuitgen.audit.row_tests import (
     Shares,
     detectable_ratio,
@@ -17,6 +19,7 @@ from circuitgen.audit.row_tests import (
     ratio_interval,
     two_sided,
 )
+from circuitgen.audit.triads import TriadCount, class_shares, draw_triples, null_shares
 from circuitgen.core.errors import InputError, Problem
 from circuitgen.run import Protocol, slice_of
 from circuitgen.spec import Recording
@@ -202,10 +205,40 @@ def judge_row(
     return [*out, (synapses, None)] if synapses else out
 
 
+def _judge_triads(
+    circuit: AuditCircuit, counted: TriadCount
+) -> list[tuple[Judgement, Shares | None]]:
+    """Judge counted triads class by class; notes tell shares by distance alone."""
+    recording = Recording.model_construct(
+        row=counted.row,
+        source=counted.source,
+        pre_type=counted.types,
+        post_type=counted.types,
+        use="audit",
+    )
+    triples = draw_triples(circuit, counted)
+    found = class_shares(circuit, triples) if len(triples) else np.zeros(16)
+    null = null_shares(circuit, triples) if len(triples) else np.zeros(16)
+    out: list[tuple[Judgement, Shares | None]] = []
+    for name, k in counted.counts.items():
+        measure, place = f"triads {name}", CLASSES.index(name)
+        if not len(triples):
+            note, share = "no three cells within the window", k / counted.total
+            row = _untested(recording, measure, counted.total, share, note)
+            out.append((row, None))
+            continue
+        shares = Shares(int(found[place]), len(triples))
+        judged = _share(recording, measure, k, counted.total, shares)
+        judged.note = f"by distance alone {null[place]:.3g}"
+        out.append((judged, shares))
+    return out
+
+
 def audit(
     circuit: AuditCircuit,
     recordings: Sequence[Recording],
     slice_counts: Callable[[Protocol], tuple[float, float] | None] | None = None,
+    triads: Sequence[TriadCount] = (),
 ) -> list[Judgement]:
     """Hold a circuit against recordings.
 
@@ -215,6 +248,8 @@ def audit(
     recordings : sequence of Recording
     slice_counts : callable, optional
         Gives (connected, pairs) of a protocol with a slice, None where it cannot.
+    triads : sequence of TriadCount
+        Counts of triad classes.
 
     Returns
     -------
@@ -238,6 +273,8 @@ def audit(
                                          measured, note), None))  # fmt: skip
                 continue
         judged += judge_row(recording, found, in_slice)
+    for counted in triads:
+        judged += _judge_triads(circuit, counted)
     for use in ("audit", "fit"):
         _conclude([pair for pair in judged if pair[0].use == use])
     return [judgement for judgement, _ in judged]

@@ -2,8 +2,9 @@
 
 The circuit is a draw itself: with K of its N pairs connected, k of n pairs recorded from
 the same law follow the beta-binomial distribution with K + 1/2 and N - K + 1/2
-(Jeffreys' prior). Where cells were recorded together, counts vary more; the distribution is widened
-to the design effect that virtual clusters of the circuit show (Kish 1965).
+(Jeffreys' prior). Where cells were recorded together, counts vary more; the
+distribution is widened to the design effect that virtual clusters of the circuit
+show (Kish 1965, Survey Sampling).
 """
 
 from __future__ import annotations
@@ -91,7 +92,7 @@ def ratio_interval(shares: Shares, k: int, n: int) -> tuple[float, float, float]
     low = 0.0 if k == 0 else float(beta.ppf(0.025, hits, size - hits + 1))
     high = 1.0 if k == n else float(beta.ppf(0.975, hits + 1, size - hits))
     measured = k / n
-    with np.errstate(divide="ignore"):
+    with np.errstate(divide="ignore", invalid="ignore"):
         ratios = shares.p / np.array([measured, high, low])
     return tuple(float(ratio) for ratio in ratios)
 

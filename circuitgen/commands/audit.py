@@ -16,11 +16,13 @@ from circuitgen.core.errors import InputError, Problem
 def run_audit(arguments: argparse.Namespace) -> int:
     """Audit a circuit and print what came out."""
     _check(arguments)
-    from circuitgen.audit import SliceView, audit, graph_facts, overall
+    from circuitgen.audit import SliceView, audit, graph_facts, overall, read_triads
 
     circuit, recordings = _read(arguments)
     view = SliceView(arguments.run_folder) if arguments.run_folder else None
-    judged = audit(circuit, recordings, view.counts if view else None)
+    names = (*circuit.type_names, *circuit.groups)
+    triads = read_triads(arguments.triads, names) if arguments.triads else []
+    judged = audit(circuit, recordings, view.counts if view else None, triads)
     total = overall(judged)
     facts = graph_facts(circuit) if arguments.graph else None
     rows = [_finite(dataclasses.asdict(judgement)) for judgement in judged]
@@ -105,7 +107,9 @@ def _print(judged, total: dict, facts: dict | None) -> None:
         for one in sorted(mine, key=lambda j: (j.q_value is None, j.q_value, j.row)):
             name = f"{one.pre_type} > {one.post_type}"
             if one.measure != "connection probability":
-                name = f"{name[:18]}, {one.measure.split()[0]}"
+                words = one.measure.split()
+                word = one.measure if words[0] == "triads" else words[0]
+                name = f"{name[:17]}, {word}"
             say(
                 f"{one.row:>4} {name[:30]:<31}{_number(one.measured):>8}"
                 f"{_number(one.circuit):>8}{_number(one.q_value):>7}"
@@ -158,6 +162,12 @@ def add_audit_command(commands) -> None:
         "--columns",
         metavar="OURS=THEIRS,...",
         help="names of their columns, as pre_cell_id=source,post_cell_id=target",
+    )
+    parser.add_argument(
+        "--triads",
+        type=Path,
+        metavar="FILE",
+        help="CSV of counted triad classes: types, distance_high_um, class, count",
     )
     parser.add_argument(
         "--graph", action="store_true", help="also density, degrees and triads"

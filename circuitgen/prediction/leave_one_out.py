@@ -138,7 +138,7 @@ def check_intervals(
         for left in sets:
             mine = list(range(first, first + len(left.windows)))
             for place in mine:
-                distribution = rule.predict(mine, place)
+                distribution = rule.predict(mine, flat[place], classes[place])
                 found = score(distribution, rows[place]["connected_n"])
                 rows[place].setdefault("plain", {})[name] = found["log_score"]
             first += len(mine)

@@ -49,33 +49,39 @@ class PlainRule:
     """One rule over some recordings: their likelihoods on a grid of log odds."""
 
     def __init__(self, rule: str, windows: Sequence[Window], classes: Sequence):
+        self._rule = rule
         k = np.array([w.recording.connected_n for w in windows])
-        self._n = np.array([w.recording.tested_n for w in windows])
-        self._p = np.array([_probabilities(w, rule) for w in windows])
-        likelihood = binom.pmf(k[:, None], self._n[:, None], self._p)
+        n = np.array([w.recording.tested_n for w in windows])
+        p = np.array([_probabilities(w, rule) for w in windows])
+        likelihood = binom.pmf(k[:, None], n[:, None], p)
         # (recordings, spreads, means): likelihood under every normal on the grid.
-        self._normals = _normals()
+        shape = (len(windows), _SPREADS.size, _MEANS.size)
+        flat = _normals().reshape(-1, _ODDS.size)
         with np.errstate(divide="ignore"):
-            self._logs = np.log(np.einsum("rx,smx->rsm", likelihood, self._normals))
-        self._logs = np.maximum(self._logs, -1e6)
-        signs = classes if rule == RULES[1] else [0] * len(windows)
-        self._classes = np.array([str(sign) for sign in signs])
+            logs = np.log((likelihood @ flat.T).reshape(shape))
+        self._logs = np.maximum(logs, -1e6)
+        self._classes = np.array([self._class(sign) for sign in classes])
 
-    def predict(self, left_out: Sequence[int], row: int) -> np.ndarray:
-        """Return P(k) for k = 0 .. n of one row from all rows not left out."""
-        others = np.setdiff1d(np.arange(len(self._n)), left_out)
+    def _class(self, sign) -> str:
+        return str(sign) if self._rule == RULES[1] else ""
+
+    def predict(self, left_out: Sequence[int], window: Window, sign) -> np.ndarray:
+        """Return P(k) for k = 0 .. n of a recording from all rows not left out.
+
+        `sign` is its class, as those of the rows were given.
+        """
+        others = np.setdiff1d(np.arange(self._classes.size), left_out)
         best = np.zeros(_SPREADS.size)
         for name in np.unique(self._classes[others]):
             mine = others[self._classes[others] == name]
             best += self._logs[mine].sum(axis=0).max(axis=1)
-        spread = int(best.argmax()) if others.size else _SPREADS.size - 1
-        like = others[self._classes[others] == self._classes[row]]
-        like = like if like.size else others
-        mean = int(self._logs[like, spread].sum(axis=0).argmax()) if like.size else 0
-        shares = (
-            self._normals[spread, mean]
-            if others.size
-            else np.full(_ODDS.size, 1 / _ODDS.size)
-        )
-        counts = np.arange(self._n[row] + 1)
-        return binom.pmf(counts[:, None], self._n[row], self._p[row]) @ shares
+        shares = np.full(_ODDS.size, 1 / _ODDS.size)
+        if others.size:
+            like = others[self._classes[others] == self._class(sign)]
+            like = like if like.size else others
+            spread = int(best.argmax())
+            mean = int(self._logs[like, spread].sum(axis=0).argmax())
+            shares = _normals()[spread, mean]
+        n = window.recording.tested_n
+        counts = np.arange(n + 1)
+        return binom.pmf(counts[:, None], n, _probabilities(window, self._rule)) @ shares

@@ -106,6 +106,9 @@ class Tally:
             found = self.counts[place]
             most = int(np.flatnonzero(found.any(axis=1)).max(initial=0))
             histogram = found[: most + 1].copy()
+            if self.protocol.cut is not None and histogram.any():
+                # Placements only estimate the chance of the pairs, which is known.
+                histogram *= self._touching[place] / histogram.sum()
             total = counter.count(pre, post, self.protocol)
             # Autapses touch but are no pair of different cells.
             histogram[0, 0] = max(total - self._touching[place], 0.0)

@@ -31,17 +31,19 @@ from circuitgen.wiring import Window, fit_pathways, show
 NEW_PAIRS = 100
 
 
-def _plain_scores(world, pathway, histogram, k: int) -> list[float]:
+def _plain_rules(world) -> list[PlainRule]:
+    """Return the three plain rules over a world's recordings."""
+    sign = world.is_excitatory
+    classes = [(sign[p[0]], sign[p[1]]) for w in world.windows for p in w.pathways]
+    return [PlainRule(name, world.windows, classes) for name in RULES]
+
+
+def _plain_scores(world, rules, pathway, histogram, k: int) -> list[float]:
     """Log scores of the three plain rules for k of the new pairs of a pathway."""
     fresh = Recording(pre_type="a", post_type="b", tested_n=NEW_PAIRS, connected_n=k)
-    windows = [*world.windows, Window(fresh, {pathway: histogram})]
-    sign = world.is_excitatory
-    classes = [(sign[p[0]], sign[p[1]]) for w in windows for p in w.pathways]
-    last = len(windows) - 1
-    return [
-        float(np.log(PlainRule(name, windows, classes).predict([last], last)[k]))
-        for name in RULES
-    ]
+    window = Window(fresh, {pathway: histogram})
+    sign = tuple(world.is_excitatory[end] for end in pathway)
+    return [float(np.log(rule.predict([], window, sign)[k])) for rule in rules]
 
 
 def score_world(task: tuple[int, str, int]) -> dict[str, float]:
@@ -50,6 +52,7 @@ def score_world(task: tuple[int, str, int]) -> dict[str, float]:
     world = make_world(seed, kind)
     random = np.random.default_rng(10_000 + seed)
     fit = fit_pathways(world.is_excitatory, world.home_layer, world.windows, seed=seed)
+    rules = _plain_rules(world)
     recorded = {pathway for window in world.windows for pathway in window.pathways}
     inside, own, plain, errors = [], [], [], []
     for place, (pathway, histogram) in enumerate(world.histograms.items()):
@@ -66,7 +69,7 @@ def score_world(task: tuple[int, str, int]) -> dict[str, float]:
         if place % step == 0:
             k = int(random.binomial(NEW_PAIRS, true))
             own.append(float(np.log(binom.pmf(k, NEW_PAIRS, p).mean())))
-            plain.append(_plain_scores(world, pathway, histogram, k))
+            plain.append(_plain_scores(world, rules, pathway, histogram, k))
     cover = np.mean(inside, axis=0)
     return {
         "coverage_90": float(cover[0]),
