@@ -12,12 +12,12 @@ from builders_spec import RECORDINGS, SPEC, edited, load, problems
 
 from circuitgen.spec import RECORDING_COLUMNS
 
-# The columns as published in the design of the file format.
+# The columns of the file format, in order.
 PUBLISHED_COLUMNS = (
     "source, pre_type, post_type, tested_n, connected_n, probability, "
     "distance_low_um, distance_high_um, distance_kind, slice_thickness_um, "
     "soma_depth_low_um, soma_depth_high_um, synapses_mean, synapses_sd, "
-    "synapses_pairs_n, reciprocal_tested_n, reciprocal_connected_n, use"
+    "synapses_pairs_n, reciprocal_tested_n, reciprocal_connected_n, cluster_size, use"
 ).split(", ")
 
 FULL_ROW = {
@@ -37,6 +37,7 @@ FULL_ROW = {
     "synapses_pairs_n": 4,
     "reciprocal_tested_n": 20,
     "reciprocal_connected_n": 1,
+    "cluster_size": 4,
     "use": "audit",
 }
 LEAST_ROW = {"pre_type": "L23_basket", "post_type": "L23_basket", "probability": 0.25}
