@@ -1,6 +1,7 @@
 """Does a circuit agree with recordings? The fair test, row by row."""
 
 from circuitgen.audit.circuit import AuditCircuit, read_run
+from circuitgen.audit.degrees import read_degrees
 from circuitgen.audit.foreign import read_foreign, read_mapping
 from circuitgen.audit.graph import graph_facts
 from circuitgen.audit.judge import LEVEL, Judgement, audit, overall
@@ -15,6 +16,7 @@ __all__ = [
     "audit",
     "graph_facts",
     "overall",
+    "read_degrees",
     "read_foreign",
     "read_mapping",
     "read_run",

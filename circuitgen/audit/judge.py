@@ -9,6 +9,7 @@ import numpy as np
 from scipy.stats import false_discovery_control
 
 from circuitgen.audit.circuit import AuditCircuit
+from circuitgen.audit.degrees import DegreeSpread, compare_spread
 from circuitgen.audit.experiment import Experimenter, Found
 from circuitgen.audit.graph import CLASSES
 from circuitgen.audit.row_tests import (
@@ -234,11 +235,44 @@ def _judge_triads(
     return out
 
 
+def _judge_degrees(circuit: AuditCircuit, measured: DegreeSpread) -> Judgement:
+    """Judge a spread of degrees; the note tells the spread by chance."""
+    recording = Recording.model_construct(
+        row=measured.row,
+        source=measured.source,
+        pre_type=measured.types,
+        post_type=measured.types,
+        use="audit",
+    )
+    measure, n = f"{measured.direction}-degree spread", measured.cells_n
+    found = compare_spread(circuit, measured)
+    if found is None:
+        note = "too few connected cells of the type"
+        return _untested(recording, measure, n, measured.variation, note)
+    return _plain(
+        recording,
+        measure,
+        tested_n=n,
+        measured=measured.variation,
+        circuit=found.variation,
+        expected_low=None,
+        expected_high=None,
+        ratio=found.variation / measured.variation if measured.variation else None,
+        ratio_low=None,
+        ratio_high=None,
+        design_effect=1.0,
+        p_value=found.p_value,
+        direction="too high" if found.variation > measured.variation else "too low",
+        note=f"by chance {found.by_chance:.3g}",
+    )
+
+
 def audit(
     circuit: AuditCircuit,
     recordings: Sequence[Recording],
     slice_counts: Callable[[Protocol], tuple[float, float] | None] | None = None,
     triads: Sequence[TriadCount] = (),
+    degrees: Sequence[DegreeSpread] = (),
 ) -> list[Judgement]:
     """Hold a circuit against recordings.
 
@@ -250,6 +284,8 @@ def audit(
         Gives (connected, pairs) of a protocol with a slice, None where it cannot.
     triads : sequence of TriadCount
         Counts of triad classes.
+    degrees : sequence of DegreeSpread
+        Measured spreads of degrees.
 
     Returns
     -------
@@ -275,6 +311,7 @@ def audit(
         judged += judge_row(recording, found, in_slice)
     for counted in triads:
         judged += _judge_triads(circuit, counted)
+    judged += [(_judge_degrees(circuit, measured), None) for measured in degrees]
     for use in ("audit", "fit"):
         _conclude([pair for pair in judged if pair[0].use == use])
     return [judgement for judgement, _ in judged]

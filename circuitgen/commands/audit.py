@@ -16,13 +16,22 @@ from circuitgen.core.errors import InputError, Problem
 def run_audit(arguments: argparse.Namespace) -> int:
     """Audit a circuit and print what came out."""
     _check(arguments)
-    from circuitgen.audit import SliceView, audit, graph_facts, overall, read_triads
+    from circuitgen.audit import (
+        SliceView,
+        audit,
+        graph_facts,
+        overall,
+        read_degrees,
+        read_triads,
+    )
 
     circuit, recordings = _read(arguments)
     view = SliceView(arguments.run_folder) if arguments.run_folder else None
     names = (*circuit.type_names, *circuit.groups)
     triads = read_triads(arguments.triads, names) if arguments.triads else []
-    judged = audit(circuit, recordings, view.counts if view else None, triads)
+    degrees = read_degrees(arguments.degrees, names) if arguments.degrees else []
+    slices = view.counts if view else None
+    judged = audit(circuit, recordings, slices, triads, degrees)
     total = overall(judged)
     facts = graph_facts(circuit) if arguments.graph else None
     rows = [_finite(dataclasses.asdict(judgement)) for judgement in judged]
@@ -168,6 +177,13 @@ def add_audit_command(commands) -> None:
         type=Path,
         metavar="FILE",
         help="CSV of counted triad classes: types, distance_high_um, class, count",
+    )
+    parser.add_argument(
+        "--degrees",
+        type=Path,
+        metavar="FILE",
+        help="CSV of measured spreads: types, direction (in or out),"
+        " coefficient_of_variation, cells_n",
     )
     parser.add_argument(
         "--graph", action="store_true", help="also density, degrees and triads"
