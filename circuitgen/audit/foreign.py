@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import csv
+import re
 from collections.abc import Mapping
 from pathlib import Path
 
@@ -46,9 +48,9 @@ def _read_table(path: Path, wanted: dict[str, str], optional: set[str]) -> pa.Ta
         if path.suffix == ".parquet" or path.is_dir():
             names = pq.ParquetDataset(path).schema.names
         else:
-            with pa_csv.open_csv(path) as reader:
-                names = reader.schema.names
-    except (OSError, pa.ArrowInvalid) as error:
+            with path.open(encoding="utf-8-sig", newline="") as stream:
+                names = next(csv.reader(stream), [])
+    except (OSError, UnicodeDecodeError, pa.ArrowInvalid) as error:
         rule = f"cannot be read: {str(error).splitlines()[0]}"
         raise InputError([Problem(str(path), None, "", rule)]) from None
     missing = [
@@ -59,23 +61,31 @@ def _read_table(path: Path, wanted: dict[str, str], optional: set[str]) -> pa.Ta
     if missing:
         raise InputError(missing)
     present = {ours: theirs for ours, theirs in wanted.items() if theirs in names}
-    try:
-        if path.suffix == ".parquet" or path.is_dir():
-            table = pq.read_table(path, columns=list(present.values()))
-        else:
-            types = {
-                theirs: pa.string() for ours, theirs in present.items()
-            }  # ids may be any text; numbers are checked below
-            table = pa_csv.read_csv(
-                path,
-                convert_options=pa_csv.ConvertOptions(
-                    include_columns=list(present.values()), column_types=types
-                ),
-            )
-    except pa.ArrowInvalid as error:
-        rule = f"is no table: {str(error).splitlines()[0]}"
-        raise InputError([Problem(str(path), None, "", rule)]) from None
+    if path.suffix == ".parquet" or path.is_dir():
+        table = pq.read_table(path, columns=list(present.values()))
+    else:
+        table = _read_csv(path, list(present.values()))
     return table.select(list(present.values())).rename_columns(list(present))
+
+
+def _read_csv(path: Path, columns: list[str]) -> pa.Table:
+    """Read columns as text (ids may be any); a broken row is named by its line."""
+    options = pa_csv.ConvertOptions(
+        include_columns=columns, column_types=dict.fromkeys(columns, pa.string())
+    )
+    try:
+        return pa_csv.read_csv(path, convert_options=options)
+    except pa.ArrowInvalid:
+        pass
+    try:
+        # Only one thread knows which row it is at.
+        one_thread = pa_csv.ReadOptions(use_threads=False)
+        return pa_csv.read_csv(path, one_thread, convert_options=options)
+    except pa.ArrowInvalid as error:
+        found = re.search(r"Row #(\d+): (.*)", str(error))
+        line, words = (int(found[1]), found[2]) if found else (None, str(error))
+        rule = f"is broken: {words.splitlines()[0]}"
+        raise InputError([Problem(str(path), line, "", rule)]) from None
 
 
 def _numbers(table: pa.Table, name: str, path: Path, theirs: str, kind) -> np.ndarray:
